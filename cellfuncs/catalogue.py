@@ -1,0 +1,630 @@
+"""The one list of functions, and the decorator that puts a definition on it.
+
+A definition is the formula alone. What an argument may be, how columns broadcast and what a bad
+input gives stand here once, and every face (Python, cells, formulas, help) reads them from here.
+"""
+
+import inspect
+from abc import ABC, abstractmethod
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from functools import lru_cache
+from itertools import islice
+from math import inf, isfinite, nextafter
+from typing import Any, Final
+
+import numpy as np
+
+from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, near_matches
+from cellfuncs.physics.expansion import Cosmology, cosmology_from
+from cellfuncs.symbols import Expr, node
+
+REQUIRED: Final = inspect.Parameter.empty
+
+
+def is_empty(value: Any) -> bool:
+    """Tell whether a value is what an empty cell gives: None, NaN or blank text."""
+    if value is None or (isinstance(value, str) and not value.strip()):
+        return True
+    if value is np.ma.masked:
+        return True
+    try:
+        return bool(value != value)
+    except (TypeError, ValueError):
+        return False
+
+
+def shown(value: Any) -> str:
+    """Return a value as a message shows it: short, on one line."""
+    if isinstance(value, float):
+        return f"{value:.10g}"
+    text = repr(value)
+    return text if len(text) <= 60 else text[:57] + "..."
+
+
+@dataclass(frozen=True, kw_only=True)
+class Argument(ABC):
+    """What one argument means and may be; `name` and `default` come from the definition."""
+
+    meaning: str
+    name: str = ""
+    default: Any = REQUIRED
+
+    @property
+    def optional(self) -> bool:
+        return self.default is not REQUIRED
+
+    @property
+    @abstractmethod
+    def allowed(self) -> str:
+        """What is allowed, in words that finish «it must be …»."""
+
+    @abstractmethod
+    def parsed(self, value: Any) -> Any:
+        """Return the value as the formula takes it; raise a CellError where it is not allowed."""
+
+    def is_column(self, value: Any) -> bool:
+        """Tell whether the value holds one element a row rather than one for all."""
+        return isinstance(value, (np.ndarray, list, tuple, range)) and np.ndim(_as_array(value)) > 0
+
+    @property
+    def default_text(self) -> str:
+        return shown(self.default) if isinstance(self.default, float) else str(self.default)
+
+
+@dataclass(frozen=True, kw_only=True)
+class Number(Argument):
+    """A number with a unit and limits.
+
+    `unit` "" is a pure number. `like` names a group whose members share one unit, whichever it is:
+    `unit` is then only its kind, shown in the help.
+    """
+
+    unit: str = ""
+    like: str = ""
+    above: float = -inf
+    at_least: float = -inf
+    below: float = inf
+    at_most: float = inf
+
+    @property
+    def allowed(self) -> str:
+        limits = [
+            *([f"above {self.above:.10g}"] if self.above > -inf else []),
+            *([f"{self.at_least:.10g} or more"] if self.at_least > -inf else []),
+            *([f"below {self.below:.10g}"] if self.below < inf else []),
+            *([f"{self.at_most:.10g} or less"] if self.at_most < inf else []),
+        ]
+        unit = f" {self.unit}" if self.unit else ""
+        return " and ".join(limits) + unit if limits else "a finite number"
+
+    def parsed(self, value: Any) -> float:
+        if type(value) is not float:
+            value = self._as_float(value)
+        low, high = self.open_interval
+        if low < value < high:
+            return value  # type: ignore[no-any-return]
+        if value != value:
+            raise MissingInput(f"{self.name} is empty")
+        if not isfinite(value):
+            raise DomainError(f"{self.name} is {value}; it must be a finite number")
+        raise DomainError(f"{self.name} is {shown(value)}; it must be {self.allowed}")
+
+    def _as_float(self, value: Any) -> float:
+        if is_empty(value):
+            raise MissingInput(f"{self.name} is empty")
+        if isinstance(value, (bool, np.bool_, str, bytes, complex, np.complexfloating)):
+            raise InputError(f"{self.name} is {shown(value)}, not a number")
+        try:
+            return float(value)
+        except OverflowError:
+            raise DomainError(f"{self.name} is too large for a number") from None
+        except (TypeError, ValueError, ArithmeticError):
+            raise InputError(f"{self.name} is {shown(value)}, not a number") from None
+
+    def column(self, value: Any) -> tuple[Any, CellError | None]:
+        """Return float64 with NaN where nothing can be computed, and the first InputError met."""
+        array = _as_array(value)
+        wrong: CellError | None = None
+        if array.dtype.kind in "fiu":
+            numbers = array.astype(np.float64)
+        else:
+            numbers = np.full(array.shape, np.nan)
+            flat = numbers.reshape(-1)
+            for index, each in enumerate(array.reshape(-1).tolist()):
+                try:
+                    flat[index] = self.parsed(self._filled(each))
+                except InputError as error:
+                    wrong = wrong or error
+                except CellError:
+                    pass
+        with np.errstate(invalid="ignore"):
+            low, high = self.open_interval
+            good = (numbers > low) & (numbers < high)
+        if not good.all():
+            numbers = np.where(good, numbers, np.nan)
+        return numbers, wrong
+
+    @property
+    def open_interval(self) -> tuple[float, float]:
+        """The limits as a pair that a number must lie between, itself not counted"""
+        return (
+            max(self.above, nextafter(self.at_least, -inf)),
+            min(self.below, nextafter(self.at_most, inf)),
+        )
+
+    def _filled(self, value: Any) -> Any:
+        return self.default if self.optional and left_out(value) else value
+
+
+@dataclass(frozen=True, kw_only=True)
+class Word(Argument):
+    """A text that the formula needs; a family that knows more of it gives a subclass."""
+
+    @property
+    def allowed(self) -> str:
+        return "text"
+
+    def parsed(self, value: Any) -> Any:
+        if is_empty(value):
+            raise MissingInput(f"{self.name} is empty")
+        if not isinstance(value, str):
+            raise InputError(f"{self.name} is {shown(value)}, not text")
+        return self.resolved(value.strip())
+
+    def resolved(self, text: str) -> Any:
+        """Return what the text stands for; raise InputError where it is not known."""
+        return text
+
+
+@dataclass(frozen=True, kw_only=True)
+class Choice(Word):
+    """One word out of a fixed list."""
+
+    choices: tuple[str, ...]
+
+    @property
+    def allowed(self) -> str:
+        return " or ".join(f'"{choice}"' for choice in self.choices)
+
+    def resolved(self, text: str) -> str:
+        folded = text.casefold()
+        for choice in self.choices:
+            if folded == choice.casefold():
+                return choice
+        raise InputError(
+            f"{self.name} is {shown(text)}; it must be {self.allowed}"
+            f" ({near_matches(text, self.choices)})"
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class CosmologySet(Argument):
+    """A published set's name, or a mapping or two-column range of parameters."""
+
+    @property
+    def allowed(self) -> str:
+        return "a published set's name, or two columns: parameter and value"
+
+    def parsed(self, value: Any) -> Cosmology:
+        if not isinstance(value, (Mapping, list, tuple, np.ndarray)) and is_empty(value):
+            raise MissingInput(f"{self.name} is empty")
+        return cosmology_from(value)
+
+    def is_column(self, value: Any) -> bool:
+        # a column of names is told from a two-column range by what its first element is
+        return (
+            isinstance(value, (np.ndarray, list, tuple))
+            and len(value) > 0
+            and (value[0] is None or isinstance(value[0], str))
+            and any(isinstance(each, str) for each in value)
+        )
+
+
+@dataclass(frozen=True, kw_only=True)
+class Anything(Argument):
+    """A value that the definition itself looks at."""
+
+    @property
+    def allowed(self) -> str:
+        return "anything"
+
+    def parsed(self, value: Any) -> Any:
+        return value
+
+    def is_column(self, value: Any) -> bool:
+        return False
+
+
+def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
+    if isinstance(value, np.ma.MaskedArray):
+        value = value.astype(object).filled(None)
+    if isinstance(value, np.ndarray):
+        return value
+    try:
+        array = np.asarray(value)
+    except (ValueError, OverflowError, TypeError):
+        array = None
+    # numpy turns a list with one text in it into texts, and None into nothing of use
+    if array is None or array.dtype.kind not in "fiu":
+        try:
+            array = np.asarray(value, dtype=object)
+        except ValueError:
+            raise InputError("the rows of a range differ in length") from None
+    return array
+
+
+@dataclass(frozen=True)
+class Function:
+    """A function of the catalogue; call it with floats or with columns."""
+
+    name: str
+    family: str
+    summary: str
+    notes: str
+    arguments: tuple[Argument, ...]
+    unit: str
+    """Of the result: a VOUnit, "" for a pure number, "text", or "as NAME" for an argument's unit"""
+    source: str
+    traceable: bool
+    body: Callable[..., Any]
+    variadic: bool = False
+    examples: tuple[str, ...] = ()
+    _defaults: tuple[Any, ...] = field(init=False, repr=False)
+    _limits: tuple[tuple[float, float], ...] = field(init=False, repr=False)
+    _required: int = field(init=False, repr=False)
+
+    def __post_init__(self) -> None:
+        defaults = tuple(
+            argument.parsed(argument.default) if argument.optional else REQUIRED
+            for argument in self.arguments
+        )
+        limits = tuple(
+            argument.open_interval if isinstance(argument, Number) else (inf, -inf)
+            for argument in self.arguments
+        )
+        object.__setattr__(self, "_defaults", defaults)
+        object.__setattr__(self, "_limits", limits)
+        object.__setattr__(self, "_required", 10**6 if self.variadic else defaults.count(REQUIRED))
+        object.__setattr__(self, "__name__", self.name.lower())
+        object.__setattr__(self, "__qualname__", self.name.lower())
+        object.__setattr__(self, "__module__", self.body.__module__)
+        object.__setattr__(self, "__doc__", docstring(self))
+        object.__setattr__(self, "__signature__", inspect.signature(self.body))
+
+    @property
+    def gives_text(self) -> bool:
+        return self.unit == "text"
+
+    def __call__(self, *given: Any, **named: Any) -> Any:
+        # a cell is a call: floats inside their limits go straight to the formula, and whatever is
+        # not so, or does not end well, takes the careful way (tests/benchmarks/ has the price)
+        if not named:
+            ready = []
+            for value, (low, high) in zip(given, self._limits):  # noqa: B905 - given may be short
+                if type(value) is not float or not low < value < high:
+                    break
+                ready.append(value)
+            else:
+                if self._required <= len(given) <= len(self.arguments):
+                    try:
+                        result = self.body(*ready, *self._defaults[len(ready) :])
+                        if type(result) is float and -inf < result < inf:
+                            return result
+                    except (CellError, ArithmeticError):
+                        pass
+        if self.variadic:
+            values: Sequence[Any] = given
+        else:
+            values = self.bound(given, named)
+            arguments = self.arguments
+            for argument, value in zip(arguments, values, strict=True):
+                if type(value) is not float and argument.is_column(value):
+                    return self._columns(values)
+        return self._single(values)
+
+    def bound(self, given: Sequence[Any], named: Mapping[str, Any] = {}) -> list[Any]:
+        """Return one value an argument, defaults put in; TypeError where the call has the wrong
+        number or names of arguments."""
+        arguments = self.arguments
+        if len(given) > len(arguments):
+            raise TypeError(
+                f"{self.name} takes {len(arguments)} arguments, not {len(given)}: {self.syntax}"
+            )
+        values: list[Any] = [*given, *([None] * (len(arguments) - len(given)))]
+        for key, value in named.items():
+            for position, argument in enumerate(arguments):
+                if argument.name == key:
+                    if position < len(given):
+                        raise TypeError(f"{self.name} was given {key} twice: {self.syntax}")
+                    values[position] = value
+                    break
+            else:
+                names = [argument.name for argument in arguments]
+                raise TypeError(f"{self.name} has no argument {key!r} ({near_matches(key, names)})")
+        for position, argument in enumerate(arguments):
+            if argument.default is not REQUIRED and left_out(values[position]):
+                values[position] = self._defaults[position]
+        return values
+
+    def _single(self, values: Sequence[Any]) -> Any:
+        try:
+            if self.variadic:
+                first = self.arguments[0].parsed(values[0] if values else None)
+                return self.body(first, *values[1:])
+            parsed = []
+            for argument, value in zip(self.arguments, values, strict=True):
+                parsed.append(argument.parsed(value))
+            result = self.body(*parsed)
+        except CellError as error:
+            raise type(error)(f"{self.name}: {error}") from None
+        except (OverflowError, ZeroDivisionError, FloatingPointError):
+            result = inf
+        if self.unit == "text":
+            return result
+        result = float(result)
+        if -inf < result < inf:
+            return result
+        given = ", ".join(
+            f"{argument.name} = {shown(value)}"
+            for argument, value in zip(self.arguments, values, strict=True)
+            if not isinstance(value, Cosmology)
+        )
+        raise DomainError(f"{self.name}: no finite result at {given}")
+
+    def _columns(self, values: Sequence[Any]) -> Any:
+        result, wrong = self.column(values)
+        if wrong is not None:
+            raise type(wrong)(f"{self.name}: {wrong}")
+        return result
+
+    def column(self, values: Sequence[Any]) -> tuple[Any, CellError | None]:
+        """Return the results for whole columns, and the first InputError met.
+
+        An element that gives no result is NaN (None in a text result): `self` called with that
+        row's values alone raises the reason. One call of the definition serves all rows that share
+        their words (line, medium, convention, cosmology).
+        """
+        wrong: CellError | None = None
+        ready: list[Any] = []
+        words: list[tuple[int, Any]] = []
+        shapes: list[tuple[int, ...]] = []
+        for position, (argument, value) in enumerate(zip(self.arguments, values, strict=True)):
+            if not argument.is_column(value):
+                try:
+                    ready.append(argument.parsed(value))
+                except InputError as error:
+                    wrong = wrong or error
+                    ready.append(None)
+                except CellError:
+                    ready.append(None)
+            elif isinstance(argument, Number):
+                numbers, problem = argument.column(value)
+                wrong = wrong or problem
+                shapes.append(numbers.shape)
+                ready.append(numbers)
+            else:
+                array = _as_array(value)
+                shapes.append(array.shape)
+                words.append((position, array))
+                ready.append(array)
+        try:
+            shape = np.broadcast_shapes(*shapes)
+        except ValueError:
+            sizes = " and ".join(str(size) for size in shapes)
+            raise InputError(f"{self.name}: columns of shapes {sizes} do not fit") from None
+        result = self._empty_column(shape)
+        if any(each is None for each in ready) or 0 in shape:
+            return result, wrong
+        if not words:
+            self._compute(result, ..., ready)
+            return result, wrong
+        for rows, parsed, problem in self._grouped(words, shape):
+            wrong = wrong or problem
+            if parsed is None:
+                continue
+            part = [
+                np.broadcast_to(each, shape).reshape(-1)[rows]
+                if isinstance(each, np.ndarray) and each.ndim
+                else each
+                for each in (parsed.get(position, each) for position, each in enumerate(ready))
+            ]
+            self._compute(result.reshape(-1), rows, part)
+        return result, wrong
+
+    def _empty_column(self, shape: tuple[int, ...]) -> Any:
+        if self.gives_text:
+            return np.full(shape, None, dtype=object)
+        return np.full(shape, np.nan)
+
+    def _compute(self, result: Any, rows: Any, ready: Sequence[Any]) -> None:
+        with np.errstate(all="ignore"):
+            try:
+                computed = self.body(*ready)
+            except CellError:
+                return
+        if not self.gives_text:
+            finite = np.isfinite(computed)
+            if not finite.all():
+                computed = np.where(finite, computed, np.nan)
+        result[rows] = computed
+
+    def _grouped(
+        self, words: Sequence[tuple[int, Any]], shape: tuple[int, ...]
+    ) -> Iterator[tuple[Any, dict[int, Any] | None, CellError | None]]:
+        """Yield the rows of each combination of words with the words parsed."""
+        codes: dict[tuple[Any, ...], int] = {}
+        lists = [np.broadcast_to(array, shape).reshape(-1).tolist() for _, array in words]
+        group = np.fromiter(
+            (codes.setdefault(_hashable(row), len(codes)) for row in zip(*lists, strict=True)),
+            dtype=np.intp,
+            count=len(lists[0]),
+        )
+        order = np.argsort(group, kind="stable")
+        ends = np.cumsum(np.bincount(group, minlength=len(codes)))
+        start = 0
+        for row, end in zip(codes, ends, strict=True):
+            rows, start = order[start:end], end
+            parsed: dict[int, Any] | None = {}
+            problem: CellError | None = None
+            for (position, _), value in zip(words, row, strict=True):
+                argument = self.arguments[position]
+                if argument.optional and left_out(value):
+                    value = argument.default
+                try:
+                    parsed[position] = argument.parsed(value)  # type: ignore[index]
+                except CellError as error:
+                    problem = error if isinstance(error, InputError) else None
+                    parsed = None
+                    break
+            yield rows, parsed, problem
+
+    def traced(self, *given: Any, **named: Any) -> Expr:
+        """Return what the function computes as an expression of the symbols among its arguments."""
+        values = []
+        for argument, value in zip(self.arguments, self.bound(given, named), strict=True):
+            symbolic = isinstance(value, (Expr, Cosmology))
+            values.append(value if symbolic else argument.parsed(value))
+        return node(self.body(*values))
+
+    @property
+    def syntax(self) -> str:
+        words = ", ".join(
+            f"[{argument.name}]" if argument.optional else argument.name
+            for argument in self.arguments
+        )
+        return f"{self.name}({words}{', …' if self.variadic else ''})"
+
+
+def left_out(value: Any) -> bool:
+    """Tell whether an optional argument is left out; a NaN comes from somewhere and is not."""
+    return value is None or (isinstance(value, str) and not value.strip())
+
+
+def _hashable(row: tuple[Any, ...]) -> tuple[Any, ...]:
+    try:
+        hash(row)
+    except TypeError:
+        return tuple(repr(each) for each in row)
+    return row
+
+
+CATALOGUE: Final[dict[str, Function]] = {}
+"""Every function by its name in a cell."""
+
+
+class function:  # noqa: N801 - it reads as a decorator
+    """Put a definition on the catalogue.
+
+    unit: the result's unit (see Function.unit)
+    source: the published source of the formula
+    traceable: whether the formula can be written with standard spreadsheet functions
+    examples: calls as they stand in a cell, for the help
+    arguments: an Argument for each of the definition's own; defaults are read off the definition
+    """
+
+    def __init__(
+        self,
+        *,
+        unit: str,
+        source: str,
+        traceable: bool = True,
+        variadic: bool = False,
+        examples: tuple[str, ...] = (),
+        **arguments: Argument,
+    ) -> None:
+        self.unit = unit
+        self.source = source
+        self.traceable = traceable
+        self.variadic = variadic
+        self.examples = examples
+        self.arguments = arguments
+
+    def __call__(self, body: Callable[..., Any]) -> Function:
+        summary, _, notes = inspect.cleandoc(body.__doc__ or "").partition("\n")
+        parameters = inspect.signature(body).parameters
+        if list(parameters) != list(self.arguments):
+            raise TypeError(f"{body.__name__}: the decorator and the definition differ")
+        arguments = tuple(
+            replace(argument, name=key, default=parameters[key].default)
+            for key, argument in self.arguments.items()
+        )
+        made = Function(
+            name=body.__name__.upper(),
+            family=body.__module__.rpartition(".")[2],
+            summary=summary,
+            notes=notes.strip(),
+            arguments=arguments,
+            unit=self.unit,
+            source=self.source,
+            traceable=self.traceable,
+            body=body,
+            variadic=self.variadic,
+            examples=self.examples,
+        )
+        CATALOGUE[made.name] = made
+        return made
+
+
+@lru_cache(maxsize=1024)
+def find(text: str) -> Function:
+    """Return the function of that name; raise InputError with near matches where there is none."""
+    found = CATALOGUE.get(text.strip().upper())
+    if found is None:
+        raise InputError(f"{text!r} is not a function ({near_matches(text, CATALOGUE)})")
+    return found
+
+
+def result_phrase(made: Function) -> str:
+    """Return what comes back, in words."""
+    if made.unit in ("", "text"):
+        return "text" if made.unit else "a pure number"
+    if made.unit.startswith("as "):
+        return f"a number in the unit of {made.unit[3:]}"
+    return f"a number in {made.unit}"
+
+
+def docstring(made: Function) -> str:
+    """Return the public docstring, made from the catalogue's entry."""
+    lines = [made.summary, ""]
+    if made.notes:
+        lines += [made.notes, ""]
+    lines.append("Arguments: floats, or arrays that broadcast to one shape.")
+    for argument in made.arguments:
+        unit = getattr(argument, "unit", "")
+        lines.append(
+            f"    {argument.name}: {argument.meaning}"
+            + (f" [{unit}]" if unit else "")
+            + f"; {argument.allowed}"
+            + (f"; left out: {argument.default_text}" if argument.optional else "")
+        )
+    lines += [
+        "",
+        f"Returns {result_phrase(made)}; an array of the broadcast shape for arrays.",
+        "Raises DomainError, InputError or MissingInput for a float (all ValueError); in an array",
+        "a number out of its domain or missing gives NaN there.",
+        "",
+        f"Source: {made.source}",
+    ]
+    return "\n".join(lines)
+
+
+def families() -> dict[str, list[Function]]:
+    """Return the functions by family, both in the order in which they are defined."""
+    grouped: dict[str, list[Function]] = {}
+    for made in CATALOGUE.values():
+        grouped.setdefault(made.family, []).append(made)
+    return grouped
+
+
+def first_reasons(
+    made: Function, rows: Sequence[Sequence[Any]], most: int | None = None
+) -> list[CellError]:
+    """Return why each of the rows gives no result, by calling the function on it alone."""
+    reasons = []
+    for row in islice(rows, most):
+        try:
+            made(*row)
+        except CellError as error:
+            reasons.append(error)
+    return reasons

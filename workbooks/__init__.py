@@ -1,0 +1,1 @@
+"""What a workbook is: templates made, logbooks filled."""
