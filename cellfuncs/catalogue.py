@@ -67,6 +67,10 @@ class Argument(ABC):
         """Tell whether the value holds one element a row rather than one for all."""
         return isinstance(value, (np.ndarray, list, tuple, range)) and np.ndim(_as_array(value)) > 0
 
+    def default_or(self, value: Any) -> Any:
+        """Return `value`, or the default where it is None."""
+        return self.default if value is None and self.optional else value
+
     @property
     def default_text(self) -> str:
         return shown(self.default) if isinstance(self.default, float) else str(self.default)
@@ -238,7 +242,7 @@ class Anything(Argument):
 
 def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
     if isinstance(value, np.ma.MaskedArray):
-        value = value.astype(object).filled(None)
+        value = np.where(np.ma.getmaskarray(value), np.array(None), np.asarray(value.data, object))
     if isinstance(value, np.ndarray):
         return value
     try:

@@ -13,7 +13,7 @@ if TYPE_CHECKING:
 COMMON = (
     "Angstrom nm um mm cm m km au pc kpc Mpc Gpc lyr s min h d yr Myr Gyr deg arcmin arcsec mas rad"
     " Hz kHz MHz GHz THz m.s-1 km.s-1 km.s-1.Mpc-1 mag K eV J erg W Jy mJy deg2 arcsec2 Mpc3"
-    " kpc.arcsec-1 cm-1 % count adu electron"
+    " kpc/arcsec cm-1 % count adu electron"
 ).split()
 """Offered as near matches; every unit that astropy knows is accepted."""
 

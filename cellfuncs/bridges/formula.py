@@ -159,11 +159,11 @@ class Guarded:
     """A function's expression with what must hold before it may be shown."""
 
     value: Expr
-    blank: tuple[Expr, ...]
+    blank: tuple[Expr, ...] = ()
     """Cells that must not be empty"""
-    typed: tuple[Expr, ...]
+    typed: tuple[Expr, ...] = ()
     """Conditions that a text in place of a number breaks"""
-    allowed: tuple[Expr, ...]
+    allowed: tuple[Expr, ...] = ()
     """Conditions that a number out of its domain breaks"""
 
     def formula(self, when_blank: Expr | None = None) -> str:
@@ -177,9 +177,8 @@ class Guarded:
         if self.typed:
             expr = Expr("IF", all_of(self.typed), expr, Expr("#VALUE!"))
         if self.blank:
-            blank = [Expr("blank", cell) for cell in self.blank]
-            empty = blank[0] if len(blank) == 1 else Expr("OR", *blank)
-            expr = Expr("IF", empty, when_blank or Expr("NA"), expr)
+            empty = any_of(tuple(Expr("blank", cell) for cell in self.blank))
+            expr = Expr("IF", empty, Expr("NA") if when_blank is None else when_blank, expr)
         text = "=" + text_of(expr)
         if len(text) > LONGEST:
             raise FormulaError(
@@ -191,6 +190,11 @@ class Guarded:
 def all_of(conditions: tuple[Expr, ...]) -> Expr:
     """Return the condition that holds where all of them do."""
     return conditions[0] if len(conditions) == 1 else Expr("AND", *conditions)
+
+
+def any_of(conditions: tuple[Expr, ...]) -> Expr:
+    """Return the condition that holds where one of them does."""
+    return conditions[0] if len(conditions) == 1 else Expr("OR", *conditions)
 
 
 def limits(argument: Number, value: Expr) -> Iterator[Expr]:

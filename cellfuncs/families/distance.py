@@ -44,7 +44,7 @@ def transverse(z: Real, cosmology: Cosmology) -> Real:
 
 
 @function(
-    velocity=Number(meaning="velocity of recession", unit="km.s-1", at_least=0.0),
+    velocity=Number(meaning="velocity of recession", unit="km/s", at_least=0.0),
     h0=HUBBLE_CONSTANT,
     unit="Mpc",
     source=HUBBLE,
@@ -195,7 +195,7 @@ def redshift_from_distance(
 @function(
     z=REDSHIFT,
     cosmology=COSMOLOGY,
-    unit="kpc.arcsec-1",
+    unit="kpc/arcsec",
     source=f"{HOGG}, eq. 18",
     examples=("=SCALE_TRANSVERSE(0.5)",),
 )

@@ -209,7 +209,7 @@ def redshift_from_line(observed: Real, line: Any, medium: Any = "vacuum") -> Rea
 
 
 @function(
-    velocity=Number(meaning="velocity, receding positive", unit="km.s-1"),
+    velocity=Number(meaning="velocity, receding positive", unit="km/s"),
     convention=CONVENTION,
     unit="",
     source=GREISEN,

@@ -17,7 +17,7 @@ HUBBLE = "Hubble 1929, PNAS 15, 168"
 CONVENTION = Choice(meaning="how a redshift becomes a velocity", choices=conventions.NAMES)
 REDSHIFT = Number(meaning="redshift", above=-1.0)
 SLOWER_THAN_LIGHT = Number(
-    meaning="velocity, receding positive", unit="km.s-1", above=-LIGHT_SPEED, below=LIGHT_SPEED
+    meaning="velocity, receding positive", unit="km/s", above=-LIGHT_SPEED, below=LIGHT_SPEED
 )
 HUBBLE_CONSTANT = Number(meaning="Hubble constant", unit="km.s-1.Mpc-1", above=0.0)
 DEFAULT_H0: float = published(DEFAULT).h0
@@ -26,7 +26,7 @@ DEFAULT_H0: float = published(DEFAULT).h0
 @function(
     z=REDSHIFT,
     convention=CONVENTION,
-    unit="km.s-1",
+    unit="km/s",
     source=GREISEN,
     examples=("=VELOCITY_FROM_REDSHIFT(0.05)", '=VELOCITY_FROM_REDSHIFT(0.05, "optical")'),
 )
@@ -40,10 +40,10 @@ def velocity_from_redshift(z: Real, convention: Any = "relativistic") -> Real:
 
 
 @function(
-    velocity=Number(meaning="velocity, receding positive", unit="km.s-1"),
+    velocity=Number(meaning="velocity, receding positive", unit="km/s"),
     from_convention=CONVENTION,
     to_convention=CONVENTION,
-    unit="km.s-1",
+    unit="km/s",
     source=GREISEN,
     examples=('=VELOCITY_CONVERTED(1500, "radio", "optical")',),
 )
@@ -56,7 +56,7 @@ def velocity_converted(velocity: Real, from_convention: Any, to_convention: Any)
 @function(
     v1=SLOWER_THAN_LIGHT,
     v2=SLOWER_THAN_LIGHT,
-    unit="km.s-1",
+    unit="km/s",
     source=EINSTEIN,
     examples=("=VELOCITY_SUM(150000, 200000)",),
 )
@@ -68,7 +68,7 @@ def velocity_sum(v1: Real, v2: Real) -> Real:
 @function(
     z=REDSHIFT,
     z_system=Number(meaning="redshift of the cluster or system", above=-1.0),
-    unit="km.s-1",
+    unit="km/s",
     source="Danese, De Zotti & di Tullio 1980, A&A 82, 322",
     examples=("=VELOCITY_PECULIAR(0.0512, 0.05)",),
 )
@@ -80,7 +80,7 @@ def velocity_peculiar(z: Real, z_system: Real) -> Real:
 @function(
     distance=Number(meaning="proper distance today", unit="Mpc", at_least=0.0),
     h0=HUBBLE_CONSTANT,
-    unit="km.s-1",
+    unit="km/s",
     source=HUBBLE,
     examples=("=VELOCITY_HUBBLE(100)", "=VELOCITY_HUBBLE(100, 70)"),
 )

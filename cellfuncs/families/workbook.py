@@ -54,7 +54,7 @@ def cosmology_value(parameter: Any, cosmology: Any = expansion.DEFAULT) -> Real:
     return choose(
         parameter,
         **{
-            key: (lambda key=key: getattr(cosmology, key.lower()))  # type: ignore[misc]
+            key: (lambda key=key: getattr(cosmology, key.lower()))
             for key in COSMOLOGY_VALUES
             if key != "m_nu"
         },

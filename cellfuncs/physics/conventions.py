@@ -39,19 +39,19 @@ def redshift_from_velocity(velocity: Real, convention: Any) -> Real:
         relativistic=lambda: within(
             abs(velocity) < LIGHT_SPEED,
             velocity,
-            f"velocity is {{}}; it must be between -{LIGHT_SPEED} and {LIGHT_SPEED} km.s-1",
+            f"velocity is {{}}; it must be between -{LIGHT_SPEED} and {LIGHT_SPEED} km/s",
             relativistic,
         ),
         optical=lambda: within(
             velocity > -LIGHT_SPEED,
             velocity,
-            f"velocity is {{}}; an optical velocity must be above -{LIGHT_SPEED} km.s-1",
+            f"velocity is {{}}; an optical velocity must be above -{LIGHT_SPEED} km/s",
             lambda: velocity / LIGHT_SPEED,
         ),
         radio=lambda: within(
             velocity < LIGHT_SPEED,
             velocity,
-            f"velocity is {{}}; a radio velocity must be below {LIGHT_SPEED} km.s-1",
+            f"velocity is {{}}; a radio velocity must be below {LIGHT_SPEED} km/s",
             lambda: velocity / (LIGHT_SPEED - velocity),
         ),
     )

@@ -182,7 +182,8 @@ class Integral:
         _, growth, per_unit = self._pieces
         with np.errstate(all="ignore"):
             far = self._tail(len(growth) / per_unit)
-        return far + np.cumsum(growth.sum(axis=1)[::-1])[::-1]
+        remainders: Floats = far + np.cumsum(growth.sum(axis=1)[::-1])[::-1]
+        return remainders
 
     @cached_property
     def _rows(self) -> list[tuple[float, ...]]:

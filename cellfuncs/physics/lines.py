@@ -7,12 +7,18 @@ Where the values come from. Lyman and ultraviolet resonance lines, Mg I 2852, Na
 blends of such doublets: table 2 of Morton 2003, read from the copy that the package linetools
 0.3.2 carries. Other lines: the difference of two energy levels of the NIST Atomic Spectra Database
 (the Ritz wavelength), read from the copy that PyNeb 1.1.32 carries; a level known to 0.1 cm⁻¹
-leaves 0.02 Å at 4700 Å and 0.09 Å at 9500 Å. Where a row says "value from memory", no copy was at
-hand.
+leaves 0.02 Å at 4700 Å and 0.09 Å at 9500 Å, and for [S III] 9069 and 9531 printed nebular tables
+differ by 0.3 Å (10 km/s). Balmer, Paschen and He II lines: computed, as said below. Where a row
+says "value from memory", no copy was at hand.
 
-A hydrogen line is the whole multiplet. Balmer and Paschen wavelengths are those that NIST gives
-for the unresolved line, from its averaged level of each n. A mean weighted by gA (as Morton's
-Lyman wavelengths are) lies blueward: for H alpha by 0.024 Å, 1.1 km/s, and for H beta by 0.5 km/s.
+A line of hydrogen or He II is its whole multiplet, unresolved: the mean of the components weighted
+by gA, as if the sublevels of the upper n were populated by their 2J+1. Lyman lines are Morton's
+means of that kind. For the others the levels are Dirac's with the reduced mass, the recoil and the
+leading terms of the Lamb shift (Bethe & Salpeter 1957), and the strengths are the squares of the
+radial integrals of the hydrogen atom, shared out in a doublet by 6j symbols. The Lamb shift moves
+H alpha by 0.0025 Å; hyperfine structure all but cancels in the mean. NIST's averaged level of each
+n, whose average is not weighted by gA, would make H alpha longer by 0.024 Å (1.1 km/s), the other
+Balmer lines longer by 0.5 to 0.6 km/s and Paschen alpha shorter by 0.6 km/s.
 
 A blend is listed only with a published wavelength and says "blend" in `obtained`. The name of a
 doublet without a number ("Mg II", "[O II]") is refused all the same: the blend and its members
@@ -26,6 +32,9 @@ from dataclasses import dataclass
 from functools import cache, lru_cache
 from importlib.resources import files
 from types import MappingProxyType
+
+import numpy as np
+from numpy.typing import NDArray
 
 from cellfuncs.errors import InputError, near_matches
 
@@ -50,6 +59,10 @@ KEY_SUBSTITUTIONS: tuple[tuple[str, str], ...] = (
     ("\u03b3", "gamma"),
     ("\u03b4", "delta"),
     ("\u03b5", "epsilon"),
+    # MATCH takes these three for wildcards, so a key must not hold them; no line's key has a slash.
+    ("*", "/"),
+    ("?", "/"),
+    ("~", "/"),
 )
 """What a spelling's key replaces, in order, after the letters are made small."""
 
@@ -169,6 +182,31 @@ def nearest(wavelength: float) -> Line:
     return min(around, key=lambda line: abs(line.vacuum - wavelength))
 
 
+def nearest_names(
+    rest: NDArray[np.float64], window: float | NDArray[np.float64]
+) -> NDArray[np.object_]:
+    """Return the names of the lines nearest to many wavelengths, None where none is near enough.
+
+    `rest` is in vacuum, at rest, in Angstrom; a line may be as far away as `window`, in Angstrom,
+    which broadcasts with it. NaN in either gives None.
+    """
+    wavelengths, names = _columns()
+    above = np.searchsorted(wavelengths, rest)
+    left = np.maximum(above - 1, 0)
+    right = np.minimum(above, len(wavelengths) - 1)
+    to_left = np.abs(wavelengths[left] - rest)
+    to_right = np.abs(wavelengths[right] - rest)
+    nearer = np.where(to_left <= to_right, left, right)
+    nobody = len(wavelengths)
+    return names[np.where(np.minimum(to_left, to_right) <= window, nearer, nobody)]
+
+
 @cache
 def _wavelengths() -> tuple[float, ...]:
     return tuple(line.vacuum for line in lines())
+
+
+@cache
+def _columns() -> tuple[NDArray[np.float64], NDArray[np.object_]]:
+    names: list[str | None] = [line.name for line in lines()]
+    return np.array(_wavelengths()), np.array([*names, None], dtype=object)

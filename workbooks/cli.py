@@ -1,0 +1,163 @@
+"""The command `cellfuncs`."""
+
+import json
+import sys
+from dataclasses import asdict
+from pathlib import Path
+from typing import TYPE_CHECKING, Annotated
+
+import typer
+
+from workbooks.logbook import LogbookError
+from workbooks.recipe import RecipeError
+
+if TYPE_CHECKING:
+    from workbooks.fill import Report
+
+app = typer.Typer(
+    name="cellfuncs",
+    help="Redshifts, velocities, distances and ages for an observatory's spreadsheets.",
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+)
+
+DONE, DATA_PROBLEMS, WRONG_CALL = 0, 1, 2
+
+
+@app.callback(invoke_without_command=True)
+def about(
+    version: Annotated[bool, typer.Option("--version", help="Print the version and stop.")] = False,
+) -> None:
+    if version:
+        from cellfuncs.version import __version__
+
+        print(f"cellfuncs {__version__}")
+        raise typer.Exit
+
+
+@app.command()
+def template(
+    recipe: Annotated[
+        str | None, typer.Argument(help="A recipe's name, or a .toml file; left out: list them.")
+    ] = None,
+    output: Annotated[
+        Path | None, typer.Option("--output", "-o", help="The workbook to write, .xlsx.")
+    ] = None,
+    formulas: Annotated[
+        str,
+        typer.Option(help="plain: standard spreadsheet formulas; none: cells left for `fill`."),
+    ] = "plain",
+    rows: Annotated[
+        int | None, typer.Option(min=1, max=100_000, help="Rows to prepare in each sheet.")
+    ] = None,
+    overwrite: Annotated[bool, typer.Option(help="Let the output replace a file.")] = False,
+) -> None:
+    """Make a template workbook that computes in any spreadsheet program, nothing installed."""
+    from workbooks import build
+    from workbooks.recipe import built_in, load
+
+    if recipe is None:
+        for name in built_in():
+            print(f"{name:16} {load(name).text.purpose}")
+        return
+    if formulas not in ("plain", "none"):
+        raise typer.BadParameter(f"--formulas is {formulas!r}; it must be plain or none")
+    loaded = load(recipe)
+    target = output or Path(f"{loaded.name}.xlsx")
+    build.build(loaded, target, formulas=formulas, rows=rows, overwrite=overwrite)
+    print(f"{target}: {loaded.text.title}")
+
+
+@app.command()
+def fill(
+    logbook: Annotated[Path, typer.Argument(help="The logbook, .xlsx.")],
+    output: Annotated[
+        Path | None,
+        typer.Option("--output", "-o", help="Where to write; left out: NAME-filled.xlsx beside."),
+    ] = None,
+    recipe: Annotated[
+        str | None,
+        typer.Option(
+            "--recipe", "-r", help="A recipe's name or .toml file; a template needs none."
+        ),
+    ] = None,
+    in_place: Annotated[
+        bool, typer.Option("--in-place", help="Write into the file itself.")
+    ] = False,
+    overwrite: Annotated[bool, typer.Option(help="Let the output replace a file.")] = False,
+    as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
+) -> None:
+    """Compute a logbook's columns and write them in; everything else stays byte for byte."""
+    from workbooks import fill as filling
+    from workbooks.recipe import load
+
+    if in_place and output is not None:
+        raise typer.BadParameter("give --in-place or --output, not both")
+    target = logbook if in_place else output or logbook.with_name(f"{logbook.stem}-filled.xlsx")
+    if not in_place and target.resolve() == logbook.resolve():
+        raise typer.BadParameter(f"{target} is the logbook itself; say --in-place to write into it")
+    report = filling.fill(
+        logbook, target, load(recipe) if recipe else None, overwrite=overwrite or in_place
+    )
+    if as_json:
+        print(json.dumps(asdict(report), ensure_ascii=False, indent=1))
+    else:
+        _print_report(report)
+    if report.has_problems:
+        raise typer.Exit(DATA_PROBLEMS)
+
+
+def _print_report(report: "Report") -> None:
+    print(f"{report.logbook} by the recipe {report.recipe} → {report.output}")
+    for sheet in report.sheets:
+        print(f"\n{sheet.name}: {_rows(sheet.filled)} filled, {_rows(sheet.refused)} refused")
+        for note in sheet.notes:
+            print(f"  note     {note}")
+        for remark in sheet.refusals:
+            print(f"  refused  {remark}")
+        for remark in sheet.doubts:
+            print(f"  doubtful {remark}")
+    for skipped in report.skipped:
+        print(f"\n{skipped.cell}: skipped, {skipped.sentence}")
+
+
+def _rows(count: int) -> str:
+    return f"{count} row" if count == 1 else f"{count} rows"
+
+
+def main() -> None:
+    """Run the command: errors are one sentence on stderr, never a traceback."""
+    for stream in (sys.stdout, sys.stderr):
+        if hasattr(stream, "reconfigure"):
+            # names in a logbook may hold letters that the terminal cannot show
+            stream.reconfigure(errors="replace")
+    try:
+        status = app(standalone_mode=False)
+    except typer.Exit as stop:
+        status = stop.exit_code
+    except typer.Abort:
+        status = _refused("stopped")
+    except typer.TyperException as error:
+        status = _refused(error.format_message())
+    except (LogbookError, RecipeError) as error:
+        status = _refused(str(error))
+    except BrokenPipeError:
+        # the reader of a pipe has had enough
+        sys.stderr.close()
+        status = DONE
+    except OSError as error:
+        status = _refused(f"{error.filename or 'a file'}: {error.strerror or error}")
+    except MemoryError:
+        status = _refused("the file is too large for this machine's memory")
+    sys.exit(status if isinstance(status, int) else DONE)
+
+
+def _refused(sentence: str) -> int:
+    print(f"cellfuncs: {' '.join(sentence.split())}", file=sys.stderr)
+    return WRONG_CALL
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,555 @@
+"""A recipe: what a workbook holds, read from TOML and held to the catalogue before it is used."""
+
+import re
+import tomllib
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from importlib.resources import files
+from pathlib import Path
+from typing import Any, Final, Literal
+
+from pydantic import BaseModel, ConfigDict, ValidationError
+
+from cellfuncs import units
+from cellfuncs.bridges.formula import FormulaError
+from cellfuncs.catalogue import Number
+from cellfuncs.errors import InputError, near_matches
+from cellfuncs.families.spectrum import LineName
+from cellfuncs.physics.expansion import PUBLISHED
+from cellfuncs.symbols import NotTraceable, name
+from workbooks.expression import TEXT, Call, Cells, ExpressionError, Key, Node, Parser, Scaled
+from workbooks.settings import COSMOLOGY_CELLS, COSMOLOGY_KEYS
+
+BUILT_IN: Final = files("workbooks") / "recipes"
+
+
+class RecipeError(ValueError):
+    """A recipe that cannot be used; the message names file and line."""
+
+
+class Model(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+class Limited(Model):
+    """Limits of a number; a text names the setting that holds the limit."""
+
+    above: float | str | None = None
+    at_least: float | str | None = None
+    below: float | str | None = None
+    at_most: float | str | None = None
+
+    def limits(self) -> Iterator[tuple[str, float | str]]:
+        """Yield comparison and limit of each limit that is given."""
+        for comparison, limit in (
+            (">", self.above),
+            (">=", self.at_least),
+            ("<", self.below),
+            ("<=", self.at_most),
+        ):
+            if limit is not None:
+                yield comparison, limit
+
+
+class Setting(Limited):
+    key: str
+    label: str
+    group: str
+    unit: str = ""
+    kind: Literal["number", "text"] = "number"
+    value: float | str | None = None
+    choices: tuple[str, ...] = ()
+    format: str = ""
+    note: str = ""
+
+
+class Column(Limited):
+    key: str
+    label: str
+    role: Literal["input", "computed"]
+    kind: Literal["number", "text", "line"] = "number"
+    unit: str = ""
+    formula: str = ""
+    choices: tuple[str, ...] = ()
+    required: bool | None = None
+    format: str = ""
+    width: float | None = None
+    note: str = ""
+    aliases: tuple[str, ...] = ()
+
+    @property
+    def header(self) -> str:
+        return f"{self.label} [{self.unit}]" if self.unit else self.label
+
+    @property
+    def is_number(self) -> bool:
+        return self.kind == "number" and not self.choices
+
+
+class Chart(Model):
+    title: str
+    x: str
+    y: tuple[str, ...]
+    y_label: str = ""
+    x_log: bool = False
+    y_log: bool = False
+    joined: bool = False
+
+
+class Sheet(Model):
+    name: str
+    rows: int = 200
+    intro: str = ""
+    columns: tuple[Column, ...]
+    charts: tuple[Chart, ...] = ()
+
+
+class Text(Model):
+    title: str
+    purpose: str
+    steps: tuple[str, ...] = ()
+    cosmology: str = ""
+    settings: tuple[Setting, ...] = ()
+    sheets: tuple[Sheet, ...]
+
+
+@dataclass(frozen=True)
+class Problem:
+    """What can be said of a row before anything is computed: the first one found is shown."""
+
+    column: Column
+    kind: Literal["missing", "not a number", "limit", "not a choice", "not a line"]
+    words: str
+    comparison: str = ""
+    limit: float | str = 0.0
+
+
+@dataclass(frozen=True)
+class Table:
+    """A sheet of a recipe with its formulas parsed."""
+
+    sheet: Sheet
+    nodes: Mapping[str, Node]
+    """By the key of each computed column, in the order in which they can be computed"""
+    required: frozenset[str]
+    """Inputs that a row cannot do without"""
+    problems: tuple[Problem, ...]
+
+    @property
+    def columns(self) -> dict[str, Column]:
+        return {column.key: column for column in self.sheet.columns}
+
+    @property
+    def inputs(self) -> list[Column]:
+        return [column for column in self.sheet.columns if column.role == "input"]
+
+    @property
+    def computed(self) -> list[Column]:
+        return [column for column in self.sheet.columns if column.role == "computed"]
+
+
+@dataclass(frozen=True)
+class Recipe:
+    """A recipe that holds: every key, function and unit in it is known and fits."""
+
+    name: str
+    source: str
+    text: Text
+    tables: tuple[Table, ...]
+
+    @property
+    def settings(self) -> dict[str, Setting]:
+        return {setting.key: setting for setting in self.text.settings}
+
+    @property
+    def has_lines(self) -> bool:
+        return any(column.kind == "line" for table in self.tables for column in table.inputs)
+
+
+def built_in() -> list[str]:
+    """Return the names of the recipes that come with the program."""
+    return sorted(
+        entry.name.removesuffix(".toml")
+        for entry in BUILT_IN.iterdir()
+        if entry.name.endswith(".toml")
+    )
+
+
+def load(recipe: str) -> Recipe:
+    """Return a recipe by its name, or from a file.
+
+    Raises RecipeError with file, line and near matches where it cannot be used.
+    """
+    if recipe in built_in():
+        return read((BUILT_IN / f"{recipe}.toml").read_bytes(), f"{recipe}.toml", recipe)
+    path = Path(recipe)
+    if path.suffix.lower() != ".toml":
+        raise RecipeError(
+            f"{recipe!r} is neither a recipe ({near_matches(recipe, built_in())}) nor a .toml file"
+        )
+    try:
+        content = path.read_bytes()
+    except OSError as error:
+        raise RecipeError(f"{path}: {error.strerror}") from None
+    return read(content, str(path), path.stem)
+
+
+def read(content: bytes, source: str, recipe_name: str) -> Recipe:
+    """Return the recipe that a file's bytes hold; `source` names the file in messages."""
+    try:
+        text = content.decode("utf-8-sig")
+    except UnicodeDecodeError:
+        raise RecipeError(f"{source}: not a UTF-8 text") from None
+    place = _Places(text, source)
+    try:
+        raw = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise RecipeError(f"{source}: {error}") from None
+    except RecursionError:
+        raise RecipeError(f"{source}: nested too deep") from None
+    try:
+        parsed = Text.model_validate(raw)
+    except ValidationError as error:
+        raise _refusal(error, place) from None
+    return _Checker(parsed, place, recipe_name).recipe()
+
+
+def _refusal(error: ValidationError, place: "_Places") -> RecipeError:
+    first = error.errors()[0]
+    path = tuple(first["loc"])
+    key = path[-1] if path else ""
+    if first["type"] == "extra_forbidden":
+        known = _fields(path)
+        return place.error(path, f"{key!r} is not a key here ({near_matches(str(key), known)})")
+    if first["type"] == "missing":
+        return place.error(path[:-1], f"the key {key!r} is missing")
+    return place.error(path, f"{key!r}: {first['msg'].lower()}")
+
+
+def _fields(path: tuple[int | str, ...]) -> list[str]:
+    """Return the keys that are known where the path leads."""
+    models: dict[str, type[BaseModel]] = {
+        "sheets": Sheet,
+        "columns": Column,
+        "charts": Chart,
+        "settings": Setting,
+    }
+    inside = [models[step] for step in path[:-1] if isinstance(step, str) and step in models]
+    return list((inside or [Text])[-1].model_fields)
+
+
+@dataclass
+class _Places:
+    """Finds the line of a key, which the TOML reader does not tell."""
+
+    text: str
+    source: str
+
+    def line(self, path: tuple[int | str, ...]) -> int:
+        lines = self.text.splitlines()
+        start, end = 0, len(lines)
+        tables: list[str] = []
+        rest = list(path)
+        while len(rest) >= 2 and isinstance(rest[0], str) and isinstance(rest[1], int):
+            tables.append(str(rest.pop(0)))
+            index = int(rest.pop(0))
+            header = re.compile(rf"\s*\[\[\s*{re.escape('.'.join(tables))}\s*\]\]")
+            found = [number for number in range(start, end) if header.match(lines[number])]
+            if index >= len(found):
+                return start + 1
+            start = found[index]
+            end = found[index + 1] if index + 1 < len(found) else end
+        if rest and isinstance(rest[0], str):
+            own = re.compile(rf"\s*[\"']?{re.escape(rest[0])}[\"']?\s*=")
+            for number in range(start, end):
+                if own.match(lines[number]):
+                    return number + 1
+        return start + 1
+
+    def error(self, path: tuple[int | str, ...], message: str) -> RecipeError:
+        return RecipeError(f"{self.source}, line {self.line(path)}: {message}")
+
+
+_WORD = re.compile(r"[a-z][a-z0-9]*(_[a-z0-9]+)*\Z")
+_CELL = re.compile(r"([a-z]{1,3}\d+|r\d*c\d*|r|c|true|false)\Z")
+
+
+@dataclass
+class _Checker:
+    text: Text
+    place: _Places
+    name: str
+    settings: dict[str, str] = field(default_factory=dict)
+
+    @property
+    def labels(self) -> dict[str, str]:
+        own = {setting.key: setting.label for setting in self.text.settings}
+        return {**{cell.cell: cell.meaning for cell in COSMOLOGY_CELLS}, **own}
+
+    def recipe(self) -> Recipe:
+        if self.text.cosmology:
+            if self.text.cosmology not in PUBLISHED:
+                near = near_matches(self.text.cosmology, PUBLISHED)
+                raise self.place.error(
+                    ("cosmology",), f"{self.text.cosmology!r} is not a published set ({near})"
+                )
+            self.settings.update(COSMOLOGY_KEYS)
+        for index, setting in enumerate(self.text.settings):
+            path = ("settings", index)
+            self._key_is_good(path, setting.key, self.settings)
+            self._unit_is_good(path, setting.unit)
+            self.settings[setting.key] = setting.unit if setting.kind == "number" else TEXT
+        if not self.text.sheets:
+            raise self.place.error((), "a recipe needs at least one sheet")
+        titles = [sheet.name.casefold() for sheet in self.text.sheets]
+        tables = []
+        for index, sheet in enumerate(self.text.sheets):
+            path = ("sheets", index)
+            if titles.index(sheet.name.casefold()) != index:
+                raise self.place.error((*path, "name"), f"two sheets are called {sheet.name!r}")
+            if not 0 < len(sheet.name) <= 31 or re.search(r"[\[\]:*?/\\]", sheet.name):
+                raise self.place.error(
+                    (*path, "name"),
+                    f"{sheet.name!r} cannot be a sheet's name: 1 to 31 characters,"
+                    " none of [ ] : * ? / \\",
+                )
+            tables.append(self._table(path, sheet))
+        return Recipe(self.name, self.place.source, self.text, tuple(tables))
+
+    def _key_is_good(self, path: tuple[int | str, ...], key: str, taken: Mapping[str, Any]) -> None:
+        path = (*path, "key")
+        if not _WORD.match(key) or _CELL.match(key):
+            raise self.place.error(
+                path, f"{key!r} cannot be a key: small letters, digits and _, and not a cell's name"
+            )
+        if key in taken:
+            raise self.place.error(path, f"{key!r} is taken already")
+
+    def _unit_is_good(self, path: tuple[int | str, ...], unit: str) -> None:
+        try:
+            units.unit_of(unit)
+        except InputError as error:
+            raise self.place.error((*path, "unit"), str(error)) from None
+
+    def _table(self, path: tuple[int | str, ...], sheet: Sheet) -> Table:
+        known: dict[str, str] = {}
+        for index, column in enumerate(sheet.columns):
+            where = (*path, "columns", index)
+            self._key_is_good(where, column.key, {**self.settings, **known})
+            self._unit_is_good(where, column.unit)
+            self._column_is_good(where, column)
+            known[column.key] = column.unit if column.is_number else TEXT
+        self._labels_differ(path, sheet)
+        parser = Parser({**self.settings, **known})
+        nodes: dict[str, Node] = {}
+        for index, column in enumerate(sheet.columns):
+            if column.role == "computed":
+                where = (*path, "columns", index, "formula")
+                try:
+                    nodes[column.key] = parser.parsed(column.formula, known[column.key])
+                except ExpressionError as error:
+                    raise self.place.error(where, str(error)) from None
+                self._formula_is_short(where, column, nodes[column.key])
+        for index, column in enumerate(sheet.columns):
+            if column.role == "input" and column.key not in parser.used and column.required:
+                raise self.place.error(
+                    (*path, "columns", index), f"{column.key!r} is required, but no formula uses it"
+                )
+        self._charts_are_good(path, sheet, known)
+        ordered = self._ordered(path, sheet, nodes)
+        required = frozenset(_required(sheet, ordered))
+        return Table(sheet, ordered, required, tuple(self._problems(sheet, ordered, required)))
+
+    def _column_is_good(self, path: tuple[int | str, ...], column: Column) -> None:
+        if column.role == "computed" and not column.formula:
+            raise self.place.error(path, f"the computed column {column.key!r} needs a formula")
+        if column.role == "input" and column.formula:
+            raise self.place.error((*path, "formula"), f"{column.key!r} is an input, not computed")
+        if not column.label.strip():
+            raise self.place.error((*path, "label"), f"{column.key!r} needs a label")
+        for comparison, limit in column.limits():
+            if isinstance(limit, str) and self.settings.get(limit, TEXT) == TEXT:
+                near = near_matches(limit, self.settings)
+                raise self.place.error(
+                    path, f"the limit {limit!r} of {column.key!r} is not a setting ({near})"
+                )
+            if isinstance(limit, str) and not units.same_kind(self.settings[limit], column.unit):
+                raise self.place.error(
+                    path, f"the limit {limit!r} and {column.key!r} are of different kinds"
+                )
+            if not column.is_number:
+                raise self.place.error(path, f"{column.key!r} is text; {comparison} does not fit")
+
+    def _labels_differ(self, path: tuple[int | str, ...], sheet: Sheet) -> None:
+        taken: dict[str, str] = {}
+        for index, column in enumerate(sheet.columns):
+            for label in (column.label, *column.aliases):
+                folded = " ".join(label.split()).casefold()
+                if taken.setdefault(folded, column.key) != column.key:
+                    raise self.place.error(
+                        (*path, "columns", index),
+                        f"{label!r} names both {taken[folded]!r} and {column.key!r}",
+                    )
+
+    def _charts_are_good(
+        self, path: tuple[int | str, ...], sheet: Sheet, known: Mapping[str, str]
+    ) -> None:
+        for index, chart in enumerate(sheet.charts):
+            where = (*path, "charts", index)
+            for key in (chart.x, *chart.y):
+                if known.get(key, TEXT) == TEXT:
+                    near = near_matches(key, [each for each in known if known[each] != TEXT])
+                    raise self.place.error(
+                        where, f"{key!r} is not a column of numbers of this sheet ({near})"
+                    )
+            for key in chart.y[1:]:
+                if not units.same_kind(known[key], known[chart.y[0]]):
+                    raise self.place.error(
+                        where,
+                        f"{key!r} and {chart.y[0]!r} cannot share an axis: their units differ",
+                    )
+
+    def _formula_is_short(self, path: tuple[int | str, ...], column: Column, tree: Node) -> None:
+        # the longest cell and setting names that a template can have stand in for the real ones
+        cells = Cells({key: name("$ZZ1048576") for key in _keys(tree)})
+        try:
+            tree.of_cells(cells).formula(when_blank=None)
+        except FormulaError as error:
+            raise self.place.error(path, f"{column.key!r}: {error}") from None
+        except NotTraceable:
+            return
+
+    def _ordered(
+        self, path: tuple[int | str, ...], sheet: Sheet, nodes: Mapping[str, Node]
+    ) -> dict[str, Node]:
+        ordered: dict[str, Node] = {}
+        waiting = dict(nodes)
+        while waiting:
+            ready = [
+                key
+                for key, tree in waiting.items()
+                if not any(used in waiting for used in _keys(tree))
+            ]
+            if not ready:
+                key = next(iter(waiting))
+                index = [column.key for column in sheet.columns].index(key)
+                raise self.place.error(
+                    (*path, "columns", index, "formula"),
+                    f"the formulas of {' and '.join(map(repr, waiting))} lead back to themselves",
+                )
+            for key in ready:
+                ordered[key] = waiting.pop(key)
+        return ordered
+
+    def _problems(
+        self, sheet: Sheet, nodes: Mapping[str, Node], required: frozenset[str]
+    ) -> Iterator[Problem]:
+        """Yield what can be wrong with the inputs, in the order to tell a person."""
+        inputs = [column for column in sheet.columns if column.role == "input"]
+        for column in inputs:
+            if column.key in required:
+                yield Problem(column, "missing", f"{column.label} is missing")
+        for column in inputs:
+            if column.is_number:
+                yield Problem(column, "not a number", f"{column.label} is not a number")
+                for comparison, limit in _tightest([*_domain(column, nodes), *column.limits()]):
+                    words = (
+                        f"{limit:.10g} {column.unit}".strip()
+                        if not isinstance(limit, str)
+                        else (f"the setting «{self.labels[limit]}»")
+                    )
+                    yield Problem(
+                        column,
+                        "limit",
+                        f"{column.label} must be {_WORDS[comparison]} {words}",
+                        comparison,
+                        limit,
+                    )
+            elif column.choices:
+                allowed = " or ".join(column.choices)
+                yield Problem(column, "not a choice", f"{column.label} must be {allowed}")
+            elif column.kind == "line":
+                yield Problem(
+                    column, "not a line", f"{column.label} is not in the sheet of line names"
+                )
+
+
+def _keys(tree: Node) -> list[str]:
+    return [part.key for part in tree.parts() if isinstance(part, Key)]
+
+
+def plain_key(part: Node | None) -> str | None:
+    """Return the key that a part is, taken to another unit or not."""
+    if isinstance(part, Scaled):
+        part = part.part
+    return part.key if isinstance(part, Key) else None
+
+
+def _required(sheet: Sheet, nodes: Mapping[str, Node]) -> Iterator[str]:
+    """Yield the inputs without which some computed column stays empty."""
+    optional: set[str] = set()
+    needed: set[str] = set()
+    for tree in nodes.values():
+        for part in tree.parts():
+            if isinstance(part, Call):
+                for argument, given in zip(part.function.arguments, part.arguments, strict=True):
+                    key = plain_key(given)
+                    if key is not None:
+                        (optional if argument.optional else needed).add(key)
+        bare = set(_keys(tree)) - optional
+        needed |= bare
+    for column in sheet.columns:
+        if column.role == "input":
+            wanted = column.key in needed if column.required is None else column.required
+            if wanted:
+                yield column.key
+
+
+_WORDS = {">": "above", ">=": "at least", "<": "below", "<=": "at most"}
+
+
+def _tightest(
+    limits: list[tuple[str, float | str]],
+) -> Iterator[tuple[str, float | str]]:
+    """Yield the lower and the upper limit that leave least, and every limit that is a setting."""
+    for strict, sign in ((">", 1), ("<", -1)):
+        fixed = [
+            (sign * limit, comparison == strict, comparison)
+            for comparison, limit in limits
+            if comparison.startswith(strict) and not isinstance(limit, str)
+        ]
+        if fixed:
+            limit, _, comparison = max(fixed)
+            yield comparison, sign * limit
+    yield from ((comparison, limit) for comparison, limit in limits if isinstance(limit, str))
+
+
+def _domain(column: Column, nodes: Mapping[str, Node]) -> Iterator[tuple[str, float | str]]:
+    """Yield the limits that the functions set to what they take straight from this column."""
+    for tree in nodes.values():
+        for part in tree.parts():
+            if not isinstance(part, Call):
+                continue
+            for argument, given in zip(part.function.arguments, part.arguments, strict=True):
+                if isinstance(argument, Number) and plain_key(given) == column.key:
+                    factor = given.factor if isinstance(given, Scaled) else 1.0
+                    for comparison, limit in (
+                        (">", argument.above),
+                        (">=", argument.at_least),
+                        ("<", argument.below),
+                        ("<=", argument.at_most),
+                    ):
+                        if abs(limit) != float("inf"):
+                            yield comparison, float(f"{limit / factor:.12g}")
+
+
+def lines_wanted(recipe: Recipe) -> bool:
+    """Tell whether a formula looks up a line."""
+    return any(
+        isinstance(argument, LineName)
+        for table in recipe.tables
+        for tree in table.nodes.values()
+        for part in tree.parts()
+        if isinstance(part, Call)
+        for argument in part.function.arguments
+    )
