@@ -15,7 +15,7 @@ from cellfuncs.errors import CellError, InputError, MissingInput
 from cellfuncs.families.workbook import provenance
 from cellfuncs.physics import lines
 from cellfuncs.physics.expansion import DEFAULT, Cosmology, cosmology_from
-from workbooks.build import ROW_OK, STATUS
+from workbooks.build import ROW_OK, STATUS, UNEXPLAINED
 from workbooks.expression import Call, Columns, Row
 from workbooks.logbook import ErrorValue, Logbook, LogbookError, Sheet, cell_name, parse_header
 from workbooks.recipe import Column, Problem, Recipe, Table, load, plain_key
@@ -429,8 +429,7 @@ class _Filler:
                 if trail_at is not None:
                     self.sheet.set(row, trail_at, made_with)
             if words_at is not None:
-                unexplained = "no result: look at this row's inputs and at the sheet Settings"
-                first = problems[0].words if problems else unexplained if failed else ROW_OK
+                first = problems[0].words if problems else UNEXPLAINED if failed else ROW_OK
                 self.sheet.set(row, words_at, first)
 
     def _set(self, row: int, place: Place, value: Any, missing: bool) -> bool:

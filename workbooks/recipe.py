@@ -91,9 +91,6 @@ class Chart(Model):
     x: str
     y: tuple[str, ...]
     y_label: str = ""
-    x_log: bool = False
-    y_log: bool = False
-    joined: bool = False
 
 
 class Sheet(Model):

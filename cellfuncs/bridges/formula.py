@@ -6,7 +6,7 @@ hidden table. Inside SUMPRODUCT only operators act on a range, because not every
 a function of a range element by element there: eˣ is EXP(1)^x, √x is x^0.5.
 """
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
@@ -187,12 +187,12 @@ class Guarded:
         return text
 
 
-def all_of(conditions: tuple[Expr, ...]) -> Expr:
+def all_of(conditions: Sequence[Expr]) -> Expr:
     """Return the condition that holds where all of them do."""
     return conditions[0] if len(conditions) == 1 else Expr("AND", *conditions)
 
 
-def any_of(conditions: tuple[Expr, ...]) -> Expr:
+def any_of(conditions: Sequence[Expr]) -> Expr:
     """Return the condition that holds where one of them does."""
     return conditions[0] if len(conditions) == 1 else Expr("OR", *conditions)
 

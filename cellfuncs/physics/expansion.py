@@ -457,7 +457,7 @@ PARAMETERS: Final[Mapping[str, Parameter]] = {
     "Om0": Parameter("", "matter density over the critical one", None, at_least=0.0),
     "Ode0": Parameter("", "dark energy density over the critical one; left out: flat", None),
     "w0": Parameter("", "dark energy's equation of state today", -1.0),
-    "wa": Parameter("", "its change: w = w0 + wa·z/(1+z)", 0.0),
+    "wa": Parameter("", "change of dark energy: w = w0 + wa·z/(1+z)", 0.0),
     "Tcmb0": Parameter("K", "temperature of the microwave background", 0.0, at_least=0.0),
     "Neff": Parameter("", "effective number of neutrino kinds", 3.04, at_least=0.0),
     "m_nu": Parameter("eV", "mass of the neutrinos: one for all kinds, or one each", 0.0, 0.0),

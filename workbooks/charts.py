@@ -1,0 +1,95 @@
+"""A sheet's charts, on a sheet of their own where a person looks before reading."""
+
+from collections.abc import Sequence
+
+from openpyxl.chart import Reference, ScatterChart, Series
+from openpyxl.chart.layout import Layout, ManualLayout
+from openpyxl.chart.shapes import GraphicalProperties
+from openpyxl.worksheet.worksheet import Worksheet
+
+from workbooks.recipe import Chart, Recipe, Table
+from workbooks.sheets import FIRST_ROW, INK, TITLE, TYPE_HERE, Book, letters_of, put, quoted
+
+SECOND = "B5651D"
+"""The colour of a second series: it differs in brightness too"""
+
+
+def chart_sheet(book: Book, recipe: Recipe, table: Table, rows: int) -> None:
+    """Add the sheet with a table's charts, and the hidden one with what they draw."""
+    charts = table.sheet.charts
+    title = "Chart" if len(recipe.tables) == 1 else f"{table.sheet.name[:24]} chart"
+    sheet = book.sheet(title)
+    sheet.page_setup.fitToHeight = 1
+    put(sheet, "A1", recipe.text.title, TITLE)
+    points = _points_sheet(book, table, rows)
+    row = 3
+    for chart in charts:
+        drawn = _chart(table, chart, points, rows)
+        sheet.add_chart(drawn, f"A{row}")
+        row += 24
+
+
+def _points_sheet(book: Book, table: Table, rows: int) -> Worksheet:
+    """What the charts draw: #N/A, which no program draws, in place of an empty result."""
+    points = book.sheet(f"{table.sheet.name[:24]} points")
+    points.sheet_state = "hidden"
+    letters = letters_of(table)
+    last = FIRST_ROW - 1 + rows
+    for place, key in enumerate(_chart_keys(table.sheet.charts), 1):
+        points.cell(1, place, f"points: {key}")
+        shown_with = [
+            f"ISNUMBER({quoted(table.sheet.name)}!{letters[y]}{{row}})"
+            for chart in table.sheet.charts
+            if key == chart.x
+            for y in chart.y
+        ]
+        for row in range(FIRST_ROW, last + 1):
+            cell = f"{quoted(table.sheet.name)}!{letters[key]}{row}"
+            drawn = f"ISNUMBER({cell})"
+            if shown_with:
+                # a point without a result must not stretch the axis
+                drawn = f"AND({drawn},OR({','.join(shown_with).format(row=row)}))"
+            points.cell(row, place, f"=IF({drawn},{cell},NA())")
+    return points
+
+
+def _chart(table: Table, chart: Chart, points: Worksheet, rows: int) -> ScatterChart:
+    keys = _chart_keys(table.sheet.charts)
+    last = FIRST_ROW - 1 + rows
+    drawn = ScatterChart()
+    drawn.style = 2
+    drawn.scatterStyle = "lineMarker"
+    drawn.title = chart.title
+    drawn.width, drawn.height = 24, 11.5
+    drawn.visible_cells_only = False  # what is drawn stands on a hidden sheet
+    drawn.display_blanks = "gap"
+    drawn.x_axis.title = table.columns[chart.x].header
+    first = table.columns[chart.y[0]]
+    label = chart.y_label or first.label
+    drawn.y_axis.title = f"{label} [{first.unit}]" if first.unit else label
+    drawn.x_axis.delete = drawn.y_axis.delete = False
+    drawn.x_axis.number_format = drawn.y_axis.number_format = "General"
+    drawn.x_axis.tickLblPos = drawn.y_axis.tickLblPos = "low"
+    drawn.x_axis.majorGridlines = None
+    drawn.legend = drawn.legend if len(chart.y) > 1 else None
+    if drawn.legend is not None:
+        drawn.legend.position = "b"
+    x = Reference(points, min_col=keys.index(chart.x) + 1, min_row=FIRST_ROW, max_row=last)
+    for key, (shape, colour) in zip(
+        chart.y, (("circle", TYPE_HERE), ("diamond", SECOND), ("square", INK)), strict=False
+    ):
+        y = Reference(points, min_col=keys.index(key) + 1, min_row=FIRST_ROW, max_row=last)
+        series = Series(y, x, title=table.columns[key].label)
+        series.marker.symbol, series.marker.size = shape, 7
+        series.marker.graphicalProperties = GraphicalProperties(solidFill=colour)
+        series.marker.graphicalProperties.line.solidFill = colour
+        series.graphicalProperties = GraphicalProperties()
+        series.graphicalProperties.line.noFill = True
+        drawn.series.append(series)
+    drawn.layout = Layout(manualLayout=ManualLayout(x=0.09, y=0.12, w=0.87, h=0.68))
+    return drawn
+
+
+def _chart_keys(charts: Sequence[Chart]) -> list[str]:
+    keys = [key for chart in charts for key in (chart.x, *chart.y)]
+    return list(dict.fromkeys(keys))
