@@ -9,7 +9,6 @@ from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import lru_cache
-from itertools import islice
 from math import inf, isfinite, nextafter
 from typing import Any, Final
 
@@ -30,7 +29,7 @@ def is_empty(value: Any) -> bool:
         return True
     try:
         return bool(value != value)
-    except (TypeError, ValueError):
+    except (TypeError, ValueError, ArithmeticError):
         return False
 
 
@@ -38,7 +37,7 @@ def shown(value: Any) -> str:
     """Return a value as a message shows it: short, on one line."""
     if isinstance(value, float):
         return f"{value:.10g}"
-    text = repr(value)
+    text = " ".join(repr(value).split())
     return text if len(text) <= 60 else text[:57] + "..."
 
 
@@ -120,7 +119,8 @@ class Number(Argument):
         if isinstance(value, (bool, np.bool_, str, bytes, complex, np.complexfloating)):
             raise InputError(f"{self.name} is {shown(value)}, not a number")
         try:
-            return float(value)
+            with np.errstate(all="ignore"):
+                return float(value)
         except OverflowError:
             raise DomainError(f"{self.name} is too large for a number") from None
         except (TypeError, ValueError, ArithmeticError):
@@ -312,7 +312,8 @@ class Function:
             else:
                 if self._required <= len(given) <= len(self.arguments):
                     try:
-                        result = self.body(*ready, *self._defaults[len(ready) :])
+                        with np.errstate(all="ignore"):
+                            result = self.body(*ready, *self._defaults[len(ready) :])
                         if type(result) is float and -inf < result < inf:
                             return result
                     except (CellError, ArithmeticError):
@@ -347,7 +348,10 @@ class Function:
                 names = [argument.name for argument in arguments]
                 raise TypeError(f"{self.name} has no argument {key!r} ({near_matches(key, names)})")
         for position, argument in enumerate(arguments):
-            if argument.default is not REQUIRED and left_out(values[position]):
+            value = values[position]
+            if isinstance(value, np.ndarray) and value.ndim == 0:
+                value = values[position] = value[()]
+            if argument.default is not REQUIRED and left_out(value):
                 values[position] = self._defaults[position]
         return values
 
@@ -359,7 +363,8 @@ class Function:
             parsed = []
             for argument, value in zip(self.arguments, values, strict=True):
                 parsed.append(argument.parsed(value))
-            result = self.body(*parsed)
+            with np.errstate(all="ignore"):
+                result = self.body(*parsed)
         except CellError as error:
             raise type(error)(f"{self.name}: {error}") from None
         except (OverflowError, ZeroDivisionError, FloatingPointError):
@@ -421,8 +426,7 @@ class Function:
         if any(each is None for each in ready) or 0 in shape:
             return result, wrong
         if not words:
-            self._compute(result, ..., ready)
-            return result, wrong
+            return result, wrong or self._compute(result, ..., ready)
         for rows, parsed, problem in self._grouped(words, shape):
             wrong = wrong or problem
             if parsed is None:
@@ -433,7 +437,7 @@ class Function:
                 else each
                 for each in (parsed.get(position, each) for position, each in enumerate(ready))
             ]
-            self._compute(result.reshape(-1), rows, part)
+            wrong = self._compute(result.reshape(-1), rows, part) or wrong
         return result, wrong
 
     def _empty_column(self, shape: tuple[int, ...]) -> Any:
@@ -441,17 +445,20 @@ class Function:
             return np.full(shape, None, dtype=object)
         return np.full(shape, np.nan)
 
-    def _compute(self, result: Any, rows: Any, ready: Sequence[Any]) -> None:
+    def _compute(self, result: Any, rows: Any, ready: Sequence[Any]) -> CellError | None:
         with np.errstate(all="ignore"):
             try:
                 computed = self.body(*ready)
+            except InputError as error:
+                return error
             except CellError:
-                return
+                return None
         if not self.gives_text:
             finite = np.isfinite(computed)
             if not finite.all():
                 computed = np.where(finite, computed, np.nan)
         result[rows] = computed
+        return None
 
     def _grouped(
         self, words: Sequence[tuple[int, Any]], shape: tuple[int, ...]
@@ -483,12 +490,32 @@ class Function:
                     break
             yield rows, parsed, problem
 
+    def explain(self, *given: Any) -> None:
+        """Raise the CellError of the first element that gives no result, if there is one."""
+        result = self(*given)
+        if not isinstance(result, np.ndarray):
+            return
+        without = np.flatnonzero([is_empty(each) for each in result.reshape(-1).tolist()])
+        if without.size:
+            self(*self.row(self.bound(given), result.shape, int(without[0])))
+
+    def row(self, values: Sequence[Any], shape: tuple[int, ...], index: int) -> list[Any]:
+        """Return the arguments of one element, counted row by row, of a call with columns."""
+        return [
+            np.broadcast_to(_as_array(value), shape).reshape(-1)[index]
+            if argument.is_column(value)
+            else value
+            for argument, value in zip(self.arguments, values, strict=True)
+        ]
+
     def traced(self, *given: Any, **named: Any) -> Expr:
         """Return what the function computes as an expression of the symbols among its arguments."""
         values = []
         for argument, value in zip(self.arguments, self.bound(given, named), strict=True):
-            symbolic = isinstance(value, (Expr, Cosmology))
-            values.append(value if symbolic else argument.parsed(value))
+            if not isinstance(value, (Expr, Cosmology)):
+                value = argument.parsed(value)
+            # a number beside a symbolic cosmology must not ask for a table of numbers
+            values.append(node(value) if isinstance(argument, Number) else value)
         return node(self.body(*values))
 
     @property
@@ -619,16 +646,3 @@ def families() -> dict[str, list[Function]]:
     for made in CATALOGUE.values():
         grouped.setdefault(made.family, []).append(made)
     return grouped
-
-
-def first_reasons(
-    made: Function, rows: Sequence[Sequence[Any]], most: int | None = None
-) -> list[CellError]:
-    """Return why each of the rows gives no result, by calling the function on it alone."""
-    reasons = []
-    for row in islice(rows, most):
-        try:
-            made(*row)
-        except CellError as error:
-            reasons.append(error)
-    return reasons

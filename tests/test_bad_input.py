@@ -13,7 +13,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, Phase, given, settings
 from hypothesis import strategies as st
 
 import cellfuncs as cf
@@ -24,7 +24,7 @@ ALLOWED_ERRORS = (DomainError, InputError, MissingInput)
 
 every_function = pytest.mark.parametrize("made", CATALOGUE.values(), ids=lambda made: made.name)
 quick = settings(
-    max_examples=60,
+    max_examples=30,
     deadline=None,
     suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large],
 )
@@ -115,33 +115,21 @@ scalars: st.SearchStrategy[Any] = st.one_of(
     st.none(),
     st.text(max_size=12),
     st.sampled_from(
-        ["", " ", "\u00a0", "\t\n", "0.5", "1e3", "nan", "inf", "-1", "H alpha", "Planck18", "air"]
-        + [
-            "radio",
-            "km/s",
-            "H0",
-            "DISTANCE_LUMINOSITY",
-            "\x00",
-            "𝟙",
-            "²",
-            "٣",
-            "*",
-            "=1+1",
-            "x" * 999,
-        ]
+        ["", " ", "\u00a0", "\t\n", "0.5", "1e3", "nan", "inf", "-1", "\x00", "x" * 999]
     ),
+    st.sampled_from(["H alpha", "Planck18", "air", "radio", "km/s", "H0", "DISTANCE_LUMINOSITY"]),
+    st.sampled_from(["𝟙", "²", "٣", "*", "=1+1"]),
     st.binary(max_size=4),
     st.complex_numbers(),
     st.datetimes(),
     st.dates(),
-    st.decimals(allow_nan=True, allow_infinity=True),
+    st.decimals(allow_nan=False, allow_infinity=True),
     st.fractions(),
     st.sampled_from(
         [
             np.float64("nan"),
             np.float32(0.5),
             np.float64(-1.0),
-            np.longdouble("1e4000"),
             np.int8(-3),
             np.uint64(2**64 - 1),
             np.bool_(True),
@@ -150,7 +138,7 @@ scalars: st.SearchStrategy[Any] = st.one_of(
             np.timedelta64(3, "s"),
             np.complex128(1j),
             np.ma.masked,
-            Decimal("sNaN"),
+            Decimal("NaN"),
             Decimal("1e99999"),
             Fraction(10**400, 1),
             object(),
@@ -182,17 +170,13 @@ arrays: st.SearchStrategy[Any] = st.one_of(
         [
             np.array([]),
             np.empty((0, 3)),
-            np.array(None, dtype=object),
-            np.array("H alpha"),
             np.ma.array([0.5, 0.6], mask=[True, False]),
             np.ma.array([1, 2], mask=[False, True]),
-            np.ma.array(0.5, mask=True),
             np.array([True, False]),
             np.array([1j, 0.5]),
             np.array(["2031-03-14"], dtype="datetime64[D]"),
             np.array([(1, 2.0)], dtype=[("a", int), ("b", float)]),
             np.array([b"x"]),
-            np.matrix([[0.5, 0.6]]),
             np.arange(24.0).reshape(2, 3, 4),
             np.array([[0.5, None], ["x", 1.0]], dtype=object),
             [["H0", 70], ["Om0", 0.3]],
@@ -224,22 +208,28 @@ def test_every_argument_bad(made: Function, data: st.DataObject) -> None:
 
 
 def ends_well(made: Function, arguments: list[Any]) -> None:
+    result, error = outcome(made, arguments)
+    if error is None:
+        assert good(made, result)
+    elif isinstance(error, TypeError):
+        too_many = len(arguments) > len(made.arguments) and not made.variadic
+        assert too_many, f"a TypeError that a caller cannot foresee: {error}"
+        assert made.name in str(error)
+    else:
+        assert "\n" not in str(error)
+        assert len(str(error)) < 2000
+        assert error.shown in ("#NUM!", "#VALUE!", "#N/A")
+        assert str(error).startswith(f"{made.name}: ")
+
+
+def outcome(made: Function, arguments: list[Any]) -> tuple[Any, Any]:
+    """Give the result, or the error that a caller has to foresee."""
     with warnings.catch_warnings():
-        warnings.simplefilter("error")
+        warnings.simplefilter("error")  # a cell has no place to show one
         try:
-            result = made(*arguments)
-        except ALLOWED_ERRORS as error:
-            assert str(error)
-            assert "\n" not in str(error)
-            assert len(str(error)) < 2000
-            assert error.shown in ("#NUM!", "#VALUE!", "#N/A")
-            assert str(error).startswith(f"{made.name}: ")
-        except TypeError as error:
-            too_many = len(arguments) > len(made.arguments) and not made.variadic
-            assert too_many, f"a TypeError that a caller cannot foresee: {error}"
-            assert made.name in str(error)
-        else:
-            assert good(made, result)
+            return made(*arguments), None
+        except (*ALLOWED_ERRORS, TypeError) as error:
+            return None, error
 
 
 # What is wrong, and what it gives -----------------------------------------------------------------
@@ -357,7 +347,8 @@ def test_a_column_with_numbers_outside_the_domain(
     name: str, position: int, argument: str, refused: list[float], taken: list[float]
 ) -> None:
     made = CATALOGUE[name]
-    column: list[Any] = [taken[0], *refused, math.inf, -math.inf, math.nan, None, taken[-1]]
+    empty = [] if made.arguments[position].optional else [None]  # left out: the default
+    column: list[Any] = [taken[0], *refused, math.inf, -math.inf, math.nan, *empty, taken[-1]]
     found = made(*with_one(name, position, column))
     assert found.shape == (len(column),)
     there = [each is not None and each == each for each in found.tolist()]
@@ -528,9 +519,8 @@ def test_a_column_gives_what_its_rows_give(made: Function, data: st.DataObject) 
     for row in range(length):
         one = [value[row] if isinstance(value, list) else value for value in arguments]
         here = found[row]
-        try:
-            alone = made(*one)
-        except CellError as error:
+        alone, error = outcome(made, one)
+        if error is not None:
             assert here is None or here != here, (one, here, str(error))
         else:
             assert here is not None, one
@@ -622,7 +612,7 @@ def test_forms_of_the_neutrino_masses(form: Any) -> None:
         ({"H0": True, "Om0": 0.3}, InputError, "H0 is True"),
         ({"H0": [70.0], "Om0": 0.3}, InputError, "H0"),
         ({**MINE, "w": -1.0}, InputError, "'w' is not a parameter"),
-        ({**MINE, "Omega_m": 0.3}, InputError, "near matches"),
+        ({**MINE, "Omega_m": 0.3}, InputError, "Om0"),
         ({**MINE, "h0": 71.0}, InputError, "twice"),
         ({**MINE, "m_nu": [0.1, 0.2]}, InputError, "2 masses"),
         ({**MINE, "m_nu": "a, b"}, InputError, "m_nu is 'a, b'"),
@@ -653,7 +643,7 @@ def test_a_column_of_cosmologies_with_an_unknown_one() -> None:
         cf.distance_luminosity([0.5, 0.5], ["Planck18", "Planck19"])
 
 
-@quick
+@settings(max_examples=8, deadline=None, phases=[Phase.explicit, Phase.generate])
 @given(
     h0=st.floats(1e-3, 1e5),
     om0=st.floats(0.0, 50.0),
@@ -705,3 +695,46 @@ def test_numbers_of_other_kinds_are_numbers() -> None:
     with pytest.raises(DomainError, match="too large"):
         cf.distance_luminosity(10**400)
     assert np.isnan(cf.distance_luminosity([10**400, 0.5])[0])
+
+
+NO_DIMENSIONS = {
+    "none": np.array(None, dtype=object),
+    "masked": np.ma.array(0.5, mask=True),
+    "text": np.array("H alpha"),
+    "number": np.array(0.5),
+    "huge": np.array(10**400, dtype=object),
+    "date": np.array("2031-03-14", dtype="datetime64[D]"),
+}
+
+
+@pytest.mark.parametrize("kind", NO_DIMENSIONS)
+def test_an_array_without_dimensions_ends_well(kind: str) -> None:
+    for made in CATALOGUE.values():
+        for position in range(len(WORKS[made.name])):
+            ends_well(made, with_one(made.name, position, NO_DIMENSIONS[kind]))
+
+
+@pytest.mark.parametrize("kind", ["none", "masked"])
+def test_an_empty_array_without_dimensions_is_missing(kind: str) -> None:
+    with pytest.raises(MissingInput, match="z is empty"):
+        cf.distance_luminosity(NO_DIMENSIONS[kind])
+
+
+@pytest.mark.parametrize("kind", ["NaN", "sNaN"])
+def test_decimals_that_are_no_number_end_well(kind: str) -> None:
+    for made in CATALOGUE.values():
+        for position in range(len(WORKS[made.name])):
+            ends_well(made, with_one(made.name, position, Decimal(kind)))
+            ends_well(made, with_one(made.name, position, [Decimal(kind)]))
+
+
+def test_more_than_a_double_can_hold() -> None:
+    huge = np.longdouble("1e4000")
+    ends_well(CATALOGUE["DISTANCE_LUMINOSITY"], [huge])
+    ends_well(CATALOGUE["DISTANCE_LUMINOSITY"], [np.array([huge, huge])])
+
+
+@pytest.mark.parametrize("units", [("nm", "s"), ("nm", ["Angstrom", "s"]), (["nm", "nqq"], "m")])
+def test_a_column_of_units_that_cannot_be_converted_is_refused(units: tuple[Any, Any]) -> None:
+    with pytest.raises(InputError, match="UNITS_CONVERTED"):
+        cf.units_converted([1.0, 2.0], *units)

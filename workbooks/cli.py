@@ -8,6 +8,9 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from cellfuncs.errors import CellError
+from workbooks.connect_excel import connect_excel
+from workbooks.functions import functions
 from workbooks.logbook import LogbookError
 from workbooks.recipe import RecipeError
 
@@ -109,6 +112,12 @@ def fill(
         raise typer.Exit(DATA_PROBLEMS)
 
 
+app.command()(functions)
+connect = typer.Typer(no_args_is_help=True, help="Connect the functions to a spreadsheet program.")
+app.add_typer(connect, name="connect")
+connect.command("excel")(connect_excel)
+
+
 def _print_report(report: "Report") -> None:
     print(f"{report.logbook} by the recipe {report.recipe} → {report.output}")
     for sheet in report.sheets:
@@ -141,7 +150,7 @@ def main() -> None:
         status = _refused("stopped")
     except typer.TyperException as error:
         status = _refused(error.format_message())
-    except (LogbookError, RecipeError) as error:
+    except (CellError, LogbookError, RecipeError) as error:
         status = _refused(str(error))
     except BrokenPipeError:
         # the reader of a pipe has had enough

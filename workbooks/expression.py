@@ -15,7 +15,7 @@ import numpy as np
 
 from cellfuncs import units
 from cellfuncs.bridges.formula import SETTINGS_COSMOLOGY, Guarded, any_of, guarded
-from cellfuncs.catalogue import CATALOGUE, Argument, CosmologySet, Function, Number
+from cellfuncs.catalogue import CATALOGUE, Argument, Choice, CosmologySet, Function, Number
 from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, near_matches
 from cellfuncs.physics.expansion import Cosmology
 from cellfuncs.symbols import Expr, build, node
@@ -434,6 +434,10 @@ class Parser:
         if not found.unit.startswith("as "):
             return found.unit
         model = parts[found.unit[3:]]
+        if any(each.name == found.unit[3:] for each in found.arguments if type(each) is Choice):
+            raise ExpressionError(
+                f"{found.name} gives another unit each time; name the setting that holds the value"
+            )
         if isinstance(model, Literal) and isinstance(model.value, str):
             return model.value
         argument = next(each for each in found.arguments if each.name == found.unit[3:])

@@ -24,7 +24,8 @@ class CosmologyCell:
 
     @property
     def own_cell(self) -> str:
-        return f"{self.cell}_own"
+        """The cell where a user types an own value"""
+        return f"{self.cell}_typed"
 
     @property
     def unit(self) -> str:

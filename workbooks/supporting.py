@@ -35,6 +35,8 @@ from workbooks.sheets import (
 )
 
 _DERIVED: Final = {
+    "expansion_holds": "Plain formulas can follow this expansion",
+    "expansion_error": "Error of this template's sums, relative",
     "omega_curvature": "Curvature density over the critical one",
     "omega_photon": "Photon density over the critical one",
     "omega_neutrino": "Neutrino density over the critical one",
@@ -246,6 +248,16 @@ def hidden_tables(book: Book, recipe: Recipe) -> None:
                 place += 1
                 values = tuple(_published_value(set_name, cell) for set_name in PUBLISHED)
                 _column_of(book, sheet, place, f"published_{cell.cell}", values)
+        for key, formula in derived_settings().items():
+            if key.endswith(("in_one_sum", "in_sums")):
+                place += 1
+                _column_of(book, sheet, place, key, ("=" + text_of(formula),))
+        place += 1
+        typed = name("omega_dark_energy_typed")
+        # what was typed counts only while the user's own set is in use
+        own = Expr("IF", Expr("same", name(SET_CELL), node(OWN)), typed, node(""))
+        blank = Expr("IF", Expr("blank", typed), node(""), own)
+        _column_of(book, sheet, place, "omega_dark_energy_own", ("=" + text_of(blank),))
 
 
 def _column_of(book: Book, sheet: Worksheet, place: int, key: str, values: Sequence[Any]) -> None:

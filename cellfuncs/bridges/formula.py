@@ -23,14 +23,13 @@ LONGEST: Final = 8192
 
 def _tables() -> dict[str, tuple[Any, ...]]:
     nodes, weights = expansion.gauss_legendre()
-    across = expansion.across_series()
+    series = expansion.volume_series()
     known = lines.keys()
     return {
         "gauss_node": tuple(nodes.tolist()),
         "gauss_weight": tuple(weights.tolist()),
-        "series_power": tuple(float(power) for power in range(1, len(across) + 1)),
-        "series_across": across,
-        "series_volume": expansion.volume_series(),
+        "series_power": tuple(float(power) for power in range(2, len(series) + 2)),
+        "series_volume": series,
         "line_key": tuple(known),
         "line_vacuum": tuple(line.vacuum for line in known.values()),
     }
@@ -237,7 +236,17 @@ def guarded(made: Function, given: Mapping[str, Any]) -> Guarded:
             blank.append(value)
         values[argument.name] = value
         _guard(argument, value, typed, allowed)
-    return Guarded(made.traced(**values), tuple(blank), tuple(typed), tuple(allowed))
+    value = made.traced(**values)
+    if value.operation != "name" and mentions(value, "omega_photon"):
+        allowed.append(name("expansion_holds"))
+    return Guarded(value, tuple(blank), tuple(typed), tuple(allowed))
+
+
+def mentions(expr: Expr, cell: str) -> bool:
+    """Tell whether an expression names a cell."""
+    return (expr.operation == "name" and expr.arguments[0] == cell) or any(
+        isinstance(each, Expr) and mentions(each, cell) for each in expr.arguments
+    )
 
 
 def _guard(argument: Argument, value: Expr, typed: list[Expr], allowed: list[Expr]) -> None:
@@ -267,7 +276,7 @@ def derived_settings() -> dict[str, Expr]:
         cells.m_nu,
     )
     flat = Expr("blank", own)
-    thrifty = expansion.derived(
+    curved = expansion.derived(
         "settings",
         cells.h0,
         cells.om0,
@@ -278,6 +287,16 @@ def derived_settings() -> dict[str, Expr]:
         cells.neff,
         cells.m_nu,
     )
+    sums = {
+        f"{integral}_{how}": sum_
+        for integral, both in cells.sums_compared().items()
+        for how, sum_ in zip(("in_one_sum", "in_sums"), both, strict=True)
+    }
+    error = (
+        abs(name("path_in_one_sum") / name("path_in_sums") - 1)
+        + abs(name("time_in_one_sum") / name("time_in_sums") - 1)
+        + abs(name("age_in_one_sum") / (name("time_in_sums") + name("age_in_sums")) - 1)
+    )
     return {
         "omega_photon": made.ogamma0,
         **{
@@ -286,5 +305,13 @@ def derived_settings() -> dict[str, Expr]:
         },
         "omega_neutrino": made.onu0,
         "omega_dark_energy": Expr("IF", flat, made.ode0, own),
-        "omega_curvature": Expr("IF", flat, node(0.0), thrifty.ok0),
+        "omega_curvature": Expr("IF", flat, node(0.0), curved.ok0),
+        **sums,
+        "expansion_error": error,
+        "expansion_holds": Expr(
+            "IF",
+            Expr("ISNUMBER", name("expansion_error")),
+            name("expansion_error") < 1e-9,
+            node(False),
+        ),
     }

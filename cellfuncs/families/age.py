@@ -13,6 +13,7 @@ from cellfuncs.symbols import Real, within
 PAST_OR_FUTURE = Number(
     meaning="redshift; below 0 is the future", above=-1.0, at_most=expansion.HIGHEST_REDSHIFT
 )
+NEVER_THERE = "z is {}: this universe was never at that redshift"
 CARROLL = "Carroll, Press & Turner 1992, ARA&A 30, 499"
 
 
@@ -103,7 +104,12 @@ def redshift_from_lookback(time: Real, cosmology: Any = expansion.DEFAULT) -> Re
 )
 def expansion_rate(z: Real, cosmology: Any = expansion.DEFAULT) -> Real:
     """Expansion rate H(z)."""
-    return cosmology.h0 * sqrt(cosmology.expansion_squared(1 + z))
+    return within(
+        cosmology.existed(z),
+        z,
+        NEVER_THERE,
+        lambda: cosmology.h0 * sqrt(cosmology.expansion_squared(1 + z)),
+    )
 
 
 @function(
@@ -116,12 +122,11 @@ def expansion_rate(z: Real, cosmology: Any = expansion.DEFAULT) -> Real:
 def deceleration(z: Real, cosmology: Any = expansion.DEFAULT) -> Real:
     """Deceleration parameter q(z); negative where the expansion accelerates."""
     u = 1 + z
-    squared = cosmology.expansion_squared(u)
     return within(
-        squared > 0,
-        squared,
-        "E² is {}: this universe was never at that redshift",
-        lambda: cosmology.expansion_squared_slope(u) / (2 * squared) - 1,
+        cosmology.existed(z),
+        z,
+        NEVER_THERE,
+        lambda: cosmology.expansion_squared_slope(u) / (2 * cosmology.expansion_squared(u)) - 1,
     )
 
 

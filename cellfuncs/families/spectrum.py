@@ -49,9 +49,11 @@ def rest_wavelength(line: Real) -> Real:
     return line
 
 
-def in_vacuum(wavelength: Real, medium: Any) -> Real:
+def in_vacuum(wavelength: Real, medium: Any, argument: str) -> Real:
     return choose(
-        medium, vacuum=lambda: wavelength, air=lambda: refraction.vacuum_from_air(wavelength)
+        medium,
+        vacuum=lambda: wavelength,
+        air=lambda: refraction.vacuum_from_air(wavelength, argument),
     )
 
 
@@ -65,7 +67,9 @@ def in_vacuum(wavelength: Real, medium: Any) -> Real:
 def line_wavelength(line: Any, medium: Any = "vacuum") -> Real:
     """Rest wavelength of a spectral line."""
     rest = rest_wavelength(line)
-    return choose(medium, vacuum=lambda: rest, air=lambda: refraction.air_from_vacuum(rest))
+    return choose(
+        medium, vacuum=lambda: rest, air=lambda: refraction.air_from_vacuum(rest, "the line")
+    )
 
 
 @function(
@@ -85,8 +89,8 @@ def line_nearest(
 
     Without a line inside the window there is no answer (#N/A).
     """
-    rest = in_vacuum(wavelength, medium) / (1 + z)
-    if isinstance(rest, np.ndarray):
+    rest = in_vacuum(wavelength, medium, "wavelength") / (1 + z)
+    if isinstance(rest, np.ndarray) or isinstance(window, np.ndarray):
         return lines.nearest_names(rest, window)
     line = lines.nearest(rest)
     if not abs(line.vacuum - rest) <= window:
@@ -129,7 +133,7 @@ def wavelength_emitted(observed: Real, z: Real) -> Real:
 )
 def wavelength_vacuum(air: Real) -> Real:
     """Vacuum wavelength of a wavelength measured in standard air, 2000 Å and longer."""
-    return refraction.vacuum_from_air(air)
+    return refraction.vacuum_from_air(air, "air")
 
 
 @function(
@@ -140,7 +144,7 @@ def wavelength_vacuum(air: Real) -> Real:
 )
 def wavelength_air(vacuum: Real) -> Real:
     """Wavelength in standard air of a vacuum wavelength, 2000 Å and longer."""
-    return refraction.air_from_vacuum(vacuum)
+    return refraction.air_from_vacuum(vacuum, "vacuum")
 
 
 @function(
@@ -205,7 +209,7 @@ def redshift_from_line(observed: Real, line: Any, medium: Any = "vacuum") -> Rea
 
     A wavelength in air is taken to vacuum first; the table's rest wavelengths are vacuum ones.
     """
-    return in_vacuum(observed, medium) / rest_wavelength(line) - 1
+    return in_vacuum(observed, medium, "observed") / rest_wavelength(line) - 1
 
 
 @function(

@@ -45,7 +45,7 @@ def units_converted(value: Real, from_unit: Any, to_unit: Any) -> Real:
 @function(
     parameter=Choice(meaning="which parameter", choices=COSMOLOGY_VALUES),
     cosmology=COSMOLOGY,
-    unit="",
+    unit="as parameter",
     source="the sets as astropy realises them",
     examples=('=COSMOLOGY_VALUE("H0")', '=COSMOLOGY_VALUE("Om0", "WMAP9")'),
 )
@@ -74,10 +74,8 @@ def cosmology_value(parameter: Any, cosmology: Any = expansion.DEFAULT) -> Real:
 def reason(function: Any, *arguments: Any) -> Any:
     """Why a function gives an error value for these arguments, in words; "ok" where it does not."""
     called = find(function)
-    if called.name == "REASON":
-        return "ok"
     try:
-        called(*arguments)
+        called.explain(*arguments)
     except (CellError, TypeError) as error:
         return str(error)
     return "ok"

@@ -19,7 +19,8 @@ def velocity_from_redshift(z: Real, convention: Any) -> Real:
     return choose(
         convention,
         # c((1+z)²−1)/((1+z)²+1) without the difference, which would lose a small z
-        relativistic=lambda: LIGHT_SPEED * (z / (1 + (1 + z) ** 2)) * (2 + z),
+        # … and with 1+z divided out, which its square would overflow
+        relativistic=lambda: LIGHT_SPEED * (z / (1 + z)) * (1 + 1 / (1 + z)) / (1 + (1 / (1 + z)) ** 2),
         optical=lambda: LIGHT_SPEED * z,
         radio=lambda: LIGHT_SPEED * (z / (1 + z)),
     )

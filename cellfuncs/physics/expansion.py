@@ -8,11 +8,11 @@ in x every integrand is smooth from today to the time of the last scattering and
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import cache, cached_property, lru_cache
-from math import factorial, floor, isfinite, log1p, pi
+from math import factorial, floor, inf, isfinite, log1p, pi
 from typing import Any, Final
 
 import numpy as np
-from numpy import cos, cosh, exp, sin, sinh, sqrt
+from numpy import cos, cosh, exp, log, sin, sinh, sqrt
 from numpy.typing import NDArray
 
 from cellfuncs import constants
@@ -26,11 +26,11 @@ HIGHEST_REDSHIFT: Final = 1e6
 positrons have annihilated, z ≈ 1e9; tables are kept up to here."""
 
 GAUSS_ORDER: Final = 48
-"""Nodes of the Gauss-Legendre sums: comoving distance to 1e-14 and age to 2e-12 for every z up to
+"""Nodes of the Gauss-Legendre sums: comoving distance to 2e-14 and age to 2e-12 for every z up to
 100 000 (measured by tests/physics/compare_quadratures.py)."""
 
-AGE_REACH: Final = 20.0
-"""An age integral starts this far in x before its redshift; what came earlier is below 1e-12."""
+AGE_REACH: Final = 26.0
+"""An age integral sums this far in x before its redshift; before that a power law is exact."""
 
 # Komatsu et al. 2011, eq. 26, with the exponents astropy uses.
 NEUTRINO_PREFACTOR: Final = 0.22710731766  # 7/8 (4/11)^(4/3)
@@ -61,45 +61,33 @@ def gauss_sum(f: Callable[[Real], Real]) -> Real:
     return result
 
 
-SERIES_ORDER: Final = GAUSS_ORDER
-"""Terms of the two series in q = Ok·(D/D_H)² that curvature needs; they hold every q that
-z ≤ 1e6 can reach, the empty universe's 190 included."""
+SERIES_ORDER: Final = 48
+"""Terms of the series in q = Ok·(D/D_H)² for a volume; they hold every q that z ≤ 1e6 can reach,
+the empty universe's 190 included."""
 
-
-@cache
-def across_series() -> tuple[float, ...]:
-    """Return the factors of q, q², … in sinh(s)/s − 1 with q = s²."""
-    return tuple(1 / float(factorial(2 * n + 1)) for n in range(1, SERIES_ORDER))
+SMALLEST_BASE: Final = 1e-6
+"""A power of a smaller q underflows, which some spreadsheet programs call an error."""
 
 
 @cache
 def volume_series() -> tuple[float, ...]:
-    """Return the factors of q, q², … in (sinh 2s − 2s)/4s³ − 1/3 with q = s²."""
-    return tuple(2.0 ** (2 * n + 1) / float(factorial(2 * n + 3)) for n in range(1, SERIES_ORDER))
-
-
-def across_factor(q: Real) -> Real:
-    """Return sinh(s)/s for q = s² > 0, sin(s)/s for q = −s² < 0, 1 for q = 0: one function of q.
-
-    Symbols sum its series over the hidden table `series_power`, `series_across`.
-    """
-    if isinstance(q, Expr):
-        return 1 + total(name("series_across") * q ** name("series_power"))
-    s = sqrt(abs(q))
-    with np.errstate(all="ignore"):
-        factor = np.where(q > 0, sinh(s), sin(s)) / s
-    return np.where(q == 0, 1.0, factor) if isinstance(q, np.ndarray) else factor if q else 1.0
+    """Return the factors of q², q³, … in (sinh 2s − 2s)/4s³ with q = s²."""
+    return tuple(2.0 ** (2 * n + 1) / float(factorial(2 * n + 3)) for n in range(2, SERIES_ORDER))
 
 
 def volume_factor(q: Real) -> Real:
     """Return the volume within a comoving distance D over 4πD³.
 
-    It is Hogg's eq. 29 without the differences, in which a nearly flat space loses all digits.
-    Symbols sum its series over the hidden table `series_power`, `series_volume`.
+    It is Hogg's eq. 29 without the differences, in which a nearly flat space loses all digits. One
+    series serves all three spaces: q > 0 open, q < 0 closed, q = 0 flat. Symbols sum it over the
+    hidden table `series_power`, `series_volume`; there the terms from q² on, below 1e-13 of the
+    whole for a small q, take a base that does not underflow.
     """
     if isinstance(q, Expr):
-        return 1 / 3 + total(name("series_volume") * q ** name("series_power"))
-    return polynomial(q, (1 / 3, *volume_series()))
+        base = either(abs(q) < SMALLEST_BASE, lambda: SMALLEST_BASE, lambda: q)
+        series = total(name("series_volume") * base ** name("series_power"))
+        return 1 / 3 + q / 15 + series
+    return polynomial(q, (1 / 3, 1 / 15, *volume_series()))
 
 
 class Integral:
@@ -131,12 +119,28 @@ class Integral:
         if isinstance(x, float):
             return self._scalar(x, self._rows_beyond)
         if isinstance(x, Expr):
-            return self._tail(x)
+            return self.tail(x)
         return self._column(x, self._remainders, -1.0)
 
-    def _tail(self, x: Real) -> Real:
-        # x + reach·t²: the nodes crowd where the integrand is large
-        return (2 * AGE_REACH) * gauss_sum(lambda t: t * self.integrand(x + AGE_REACH * t**2))
+    def between(self, start: float, end: float) -> Real:
+        """Return the integral over an interval by one Gauss-Legendre sum."""
+        width = end - start
+        return width * gauss_sum(lambda t: self.integrand(start + width * t))
+
+    def tail(self, x: Real) -> Real:
+        """Return the integral from x on by one sum and what a power law leaves beyond its reach."""
+        end = x + AGE_REACH
+        last = self.integrand(end)
+        fall = log(last / self.integrand(end + 1))
+
+        def summed() -> Real:
+            # x + reach·t²: the nodes crowd where the integrand is large
+            near = gauss_sum(lambda t: t * self.integrand(x + AGE_REACH * t**2))
+            return 2 * AGE_REACH * near + last / fall
+
+        return within(
+            fall > 1e-6, fall, "this universe had no beginning: its past goes on for ever", summed
+        )
 
     def inverse_up_to(self, value: Real) -> Real:
         """Return the x at which the integral from 0 equals `value`; NaN where there is none."""
@@ -181,7 +185,7 @@ class Integral:
         """The integral from each piece's left edge to infinity, summed from the far end."""
         _, growth, per_unit = self._pieces
         with np.errstate(all="ignore"):
-            far = self._tail(len(growth) / per_unit)
+            far = self.tail(len(growth) / per_unit)
         remainders: Floats = far + np.cumsum(growth.sum(axis=1)[::-1])[::-1]
         return remainders
 
@@ -334,6 +338,17 @@ class Cosmology:
     def age_in_hubble_times(self) -> Real:
         return self.time.beyond(node(0.0) if is_symbolic(self) else 0.0)
 
+    def existed(self, z: Real) -> Real:
+        """Tell whether this universe was, or will be, at redshift z: E² > 0 all the way there.
+
+        For symbols only E² at z itself is looked at; a plain formula asks `sums_errors` besides.
+        """
+        real = self.expansion_squared(1 + z) > 0
+        if isinstance(real, Expr):
+            return real
+        x = np.log1p(np.maximum(z, 0.0))
+        return real & np.isfinite(self.path.up_to(x if isinstance(z, np.ndarray) else float(x)))
+
     @property
     def hubble_distance(self) -> Real:
         """Mpc"""
@@ -347,15 +362,42 @@ class Cosmology:
     def transverse(self, comoving: Real) -> Real:
         """Return the transverse comoving distance for a line-of-sight one, in Mpc (Hogg eq. 16)."""
 
-        if not isinstance(self.ok0, Expr) and self.ok0 == 0:
-            return comoving
-        q = self.curvature(comoving)
-        return within(
-            q >= -(pi**2),
-            q,
-            "the distance is beyond the antipode of a closed space (Ok·(D/D_H)² is {})",
-            lambda: comoving * across_factor(q),
+        def open_space() -> Real:
+            scale = self.hubble_distance / sqrt(self.ok0)
+            return scale * sinh(comoving / scale)
+
+        def closed_space() -> Real:
+            scale = self.hubble_distance / sqrt(-self.ok0)
+            return within(
+                comoving / scale <= pi,
+                comoving / scale,
+                "the distance, {} radians of a closed space, is beyond the antipode",
+                lambda: scale * sin(comoving / scale),
+            )
+
+        return either(
+            self.ok0 > 0,
+            open_space,
+            lambda: either(self.ok0 < 0, closed_space, lambda: comoving),
         )
+
+    def sums_compared(self) -> dict[str, tuple[Real, Real]]:
+        """Return each integral as one Gauss-Legendre sum and as several.
+
+        A universe that nearly stood still, or never began, has an E(z) that one sum over a fixed
+        table cannot follow: the two then differ. Only a plain formula needs to ask. The age as
+        several sums lacks the lookback time, the sum that `time` has.
+        """
+        top = Integral.TOP
+        pieces = ((0.0, 1.0), (1.0, 2.5), (2.5, top))
+        path, time = (
+            sum(integral.between(*piece) for piece in pieces) for integral in (self.path, self.time)
+        )
+        return {
+            "path": (self.path.between(0.0, top), path),
+            "time": (self.time.between(0.0, top), time),
+            "age": (self.time.tail(node(0.0)), self.time.tail(node(top))),
+        }
 
     def curvature(self, comoving: Real) -> Real:
         """Return Ok·(D/D_H)² of a comoving distance in Mpc."""
@@ -546,17 +588,20 @@ def _own(items: tuple[tuple[str, Any], ...], label: str) -> Cosmology:
     if number["Neff"] >= 1000:
         raise DomainError(f"cosmology: Neff is {number['Neff']:g}; it must be below 1000")
     kinds = floor(number["Neff"])
-    return derived(
-        label,
-        number["H0"],
-        number["Om0"],
-        _parameter("Ode0", given["Ode0"]) if "Ode0" in given else None,
-        number["w0"],
-        number["wa"],
-        number["Tcmb0"],
-        number["Neff"],
-        _masses(given.get("m_nu", 0.0), kinds),
-    )
+    dark_energy = _parameter("Ode0", given["Ode0"]) if "Ode0" in given else None
+    masses = _masses(given.get("m_nu", 0.0), kinds)
+    with np.errstate(all="ignore"):
+        return derived(
+            label,
+            number["H0"],
+            number["Om0"],
+            dark_energy,
+            number["w0"],
+            number["wa"],
+            number["Tcmb0"],
+            number["Neff"],
+            masses,
+        )
 
 
 @cache
@@ -579,7 +624,9 @@ def _plain(value: Any) -> Any:
         return value
     try:
         return float(value)
-    except (TypeError, ValueError, OverflowError):
+    except OverflowError:
+        return inf
+    except (TypeError, ValueError, ArithmeticError):
         return repr(value)
 
 
@@ -620,11 +667,9 @@ def cosmology_from(given: Any) -> Cosmology:
 
 
 def _is_blank(value: Any) -> bool:
-    return (
-        value is None
-        or (isinstance(value, str) and not value.strip())
-        or (isinstance(value, float) and value != value)
-    )
+    if isinstance(value, str):
+        return not value.strip()
+    return value is None or (isinstance(value, float) and value != value)
 
 
 def _rows_of(given: Any) -> list[tuple[Any, Any]]:

@@ -4,6 +4,7 @@ Carroll, Press & Turner 1992 (ARA&A 30, 499) for matter, curvature and a cosmolo
 same reading holds for dark energy that varies.
 """
 
+from functools import lru_cache
 from typing import Final
 
 import numpy as np
@@ -17,6 +18,7 @@ FUTURE: Final = 60.0
 PAST: Final = 60.0
 
 
+@lru_cache(maxsize=256)
 def fate(cosmology: Cosmology) -> str:
     """Return one of the five endings; the universe is expanding today."""
     with np.errstate(all="ignore"):
@@ -35,7 +37,11 @@ def fate(cosmology: Cosmology) -> str:
 
 def _stops(cosmology: Cosmology, x: np.ndarray[tuple[int], np.dtype[np.float64]]) -> bool:
     squared = cosmology.expansion_squared(exp(x))
-    return bool((squared <= 0).any())
+    # a touch of zero may fall between two steps: look closer where E²/u² is least
+    least = x[int(np.nanargmin(squared * exp(-2 * x)))]
+    step = abs(x[1] - x[0])
+    near = np.clip(np.linspace(least - step, least + step, 4001), x.min(), x.max())
+    return bool((squared <= 0).any() or (cosmology.expansion_squared(exp(near)) <= 0).any())
 
 
 def _log_speed_squared(cosmology: Cosmology, x: float) -> float:

@@ -9,7 +9,9 @@ from cellfuncs.symbols import Real, within
 SHORTEST = 2000.0
 """Vacuum wavelength below which the formula is not used: it nears its pole at 1833 Å."""
 
-ALLOWED = "{} Å is below 2000 Å, where air wavelengths are not in use; take vacuum wavelengths"
+ALLOWED = (
+    "{argument} is {{}} Å, below 2000 Å, where air wavelengths are not in use; take vacuum ones"
+)
 
 
 def index_of_air(vacuum: Real) -> Real:
@@ -23,12 +25,13 @@ def index_of_air(vacuum: Real) -> Real:
 SHORTEST_IN_AIR = SHORTEST / index_of_air(SHORTEST)
 
 
-def air_from_vacuum(vacuum: Real) -> Real:
-    """Return the wavelength in air of a vacuum wavelength."""
-    return within(vacuum >= SHORTEST, vacuum, ALLOWED, lambda: vacuum / index_of_air(vacuum))
+def air_from_vacuum(vacuum: Real, argument: str = "vacuum") -> Real:
+    """Return the wavelength in air of a vacuum wavelength; `argument` is its name in messages."""
+    words = ALLOWED.format(argument=argument)
+    return within(vacuum >= SHORTEST, vacuum, words, lambda: vacuum / index_of_air(vacuum))
 
 
-def vacuum_from_air(air: Real) -> Real:
+def vacuum_from_air(air: Real, argument: str = "air") -> Real:
     """Return the vacuum wavelength of a wavelength in air, to 1e-13 relative.
 
     The index changes so slowly that each turn of the fixed-point iteration gains at least three
@@ -41,4 +44,4 @@ def vacuum_from_air(air: Real) -> Real:
             vacuum = air * index_of_air(vacuum)
         return vacuum
 
-    return within(air >= SHORTEST_IN_AIR, air, ALLOWED, iterated)
+    return within(air >= SHORTEST_IN_AIR, air, ALLOWED.format(argument=argument), iterated)

@@ -39,9 +39,8 @@ def test_spellings_of_that_unit() -> None:
     """VOUnits 1.0 writes a product with a point, FITS with a point or a blank: one unit."""
     expected = units_converted(22e-3, "m.s-1.lyr-1", "km.s-1.Mpc-1")
     for spelling in ("m s-1 lyr-1", "m/s/lyr", "m.s**-1.lyr**-1"):
-        assert units_converted(22e-3, spelling, "km s-1 Mpc-1") == pytest.approx(
-            expected, rel=1e-14
-        )
+        converted = units_converted(22e-3, spelling, "km s-1 Mpc-1")
+        assert converted == pytest.approx(expected, rel=1e-14)
 
 
 def test_the_law_there_and_back() -> None:
@@ -54,8 +53,7 @@ def test_the_law_there_and_back() -> None:
 
 
 def test_hubbles_own_numbers() -> None:
-    """Hubble 1929, PNAS 15, 168: about 500 km/s/Mpc, 1000 km/s at 2 Mpc, the age it implies less
-    than that of the rocks: 2 Gyr."""
+    """Hubble 1929, PNAS 15, 168: about 500 km/s/Mpc, 1000 km/s at 2 Mpc; 1/H0 is 2 Gyr then."""
     assert distance_hubble(1000.0, 500.0) == 2
     assert time_hubble({"H0": 500.0, "Om0": 0.3}) == pytest.approx(1.96, abs=0.005)
 
@@ -77,11 +75,9 @@ def test_the_law_is_the_beginning_of_every_curve() -> None:
 
 def test_near_40_megaparsecs_the_law_is_good_to_a_percent() -> None:
     """Common practice, no source: below z ≈ 0.01 the linear law serves."""
+    curves = [("luminosity", distance_luminosity), ("comoving", distance_comoving)]
     for megaparsecs in (5.0, 10.0, 20.0, 40.0):
-        for kind, distance in [
-            ("luminosity", distance_luminosity),
-            ("comoving", distance_comoving),
-        ]:
+        for kind, distance in curves:
             z = redshift_from_distance(megaparsecs, kind)
             assert distance(z) == pytest.approx(megaparsecs, rel=1e-9)
             assert linear(z) == pytest.approx(megaparsecs, rel=0.01)
@@ -90,8 +86,8 @@ def test_near_40_megaparsecs_the_law_is_good_to_a_percent() -> None:
 def test_by_1000_megaparsecs_the_law_has_left_the_curve() -> None:
     """Common practice, no source: by about 1000 Mpc a straight line no longer serves.
 
-    The linear law then gives a luminosity distance too small by a seventh, and puts a relativistic
-    velocity's distance well off the comoving one.
+    The linear law then gives a luminosity distance too small by more than a tenth, and the
+    comoving one is off by some percent whichever velocity it is fed.
     """
     z = redshift_from_distance(1000.0, "luminosity")
     assert 0.18 < z < 0.22
@@ -110,7 +106,7 @@ def test_the_law_leaves_the_curve_steadily() -> None:
     off = 1 - distance_hubble(C * z) / distances
     assert (np.diff(off) > 0).all()
     assert off[0] < 0.003
-    assert off[-1] > 0.25
+    assert off[-1] > 0.2
 
 
 def test_the_law_is_exact_for_proper_distance_today() -> None:

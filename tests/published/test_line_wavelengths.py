@@ -298,8 +298,8 @@ def test_one_electron_lines_follow_rydberg(
 def level(charge: int, mass: float, n: int, l: int, twice_j: int) -> mpf:  # noqa: E741
     """Energy above rest, cm⁻¹: Dirac's with the reduced mass, and the Lamb shift of s levels.
 
-    The Lamb shift falls as the cube of n. Left out: recoil, the same for all of a level n at this
-    order (2e-6 Å), and the Lamb shift of p levels, 1 % of that of s.
+    The Lamb shift falls as the cube of n. Left out: recoil, below 4e-5 Å, and the Lamb
+    shift of p levels, 1 % of that of s.
     """
     k = mpf(twice_j + 1) / 2
     strength = charge * mpf(FINE_STRUCTURE)
