@@ -131,7 +131,8 @@ class Number(Argument):
         array = _as_array(value)
         wrong: CellError | None = None
         if array.dtype.kind in "fiu":
-            numbers = array.astype(np.float64)
+            with np.errstate(all="ignore"):
+                numbers = array.astype(np.float64)
         else:
             numbers = np.full(array.shape, np.nan)
             flat = numbers.reshape(-1)
@@ -240,11 +241,18 @@ class Anything(Argument):
         return False
 
 
-def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
+def _unmasked(value: Any) -> Any:
+    """Return an array with None where it is masked; without dimensions, the one value it holds"""
     if isinstance(value, np.ma.MaskedArray):
         value = np.where(np.ma.getmaskarray(value), np.array(None), np.asarray(value.data, object))
+    return value if value.ndim else value[()]
+
+
+def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
     if isinstance(value, np.ndarray):
         return value
+    if any(each is np.ma.masked for each in value):
+        value = [None if each is np.ma.masked else each for each in value]
     try:
         array = np.asarray(value)
     except (ValueError, OverflowError, TypeError):
@@ -349,8 +357,8 @@ class Function:
                 raise TypeError(f"{self.name} has no argument {key!r} ({near_matches(key, names)})")
         for position, argument in enumerate(arguments):
             value = values[position]
-            if isinstance(value, np.ndarray) and value.ndim == 0:
-                value = values[position] = value[()]
+            if isinstance(value, np.ndarray):
+                value = values[position] = _unmasked(value)
             if argument.default is not REQUIRED and left_out(value):
                 values[position] = self._defaults[position]
         return values
