@@ -8,6 +8,7 @@ import inspect
 from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from datetime import datetime
 from functools import lru_cache
 from math import inf, isfinite, nextafter
 from typing import Any, Final
@@ -37,6 +38,8 @@ def shown(value: Any) -> str:
     """Return a value as a message shows it: short, on one line."""
     if isinstance(value, float):
         return f"{value:.10g}"
+    if isinstance(value, datetime):
+        return f"the date {value:%Y-%m-%d %H:%M}"
     text = " ".join(repr(value).split())
     return text if len(text) <= 60 else text[:57] + "..."
 
@@ -175,7 +178,7 @@ class Word(Argument):
             raise MissingInput(f"{self.name} is empty")
         if not isinstance(value, str):
             raise InputError(f"{self.name} is {shown(value)}, not text")
-        return self.resolved(value.strip())
+        return self.resolved(value.strip(" "))
 
     def resolved(self, text: str) -> Any:
         """Return what the text stands for; raise InputError where it is not known."""

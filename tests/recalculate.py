@@ -21,12 +21,14 @@ Gaps of the engines, measured with LibreOffice 7.4.7, formualizer 0.13.0 and Iro
 - Calc and IronCalc take numbers equal that differ in the last bits (0.1+0.2=0.3 is TRUE), Calc
   also in INT and in a final difference (0.1+0.2-0.3 is 0); formualizer compares exactly.
 - Calc: a logical is a number (ISNUMBER(TRUE)); subnormal numbers (1E-320) are an error;
-  a number joined to text has 15 digits, in the others 16 or 17.
+  a number joined to text has 15 digits, in the others 16 or 17. A power that underflows
+  (0.0001^100) is #NUM!, in the others 0.
 - Calc reads XOR and IFNA only with the prefix _xlfn. in the file (IFS, LET: untried with it).
 - formualizer: upper and lower case only of ASCII letters, in = also; FLOOR(-2.7,-1) is -3; TRIM
   takes the no-break space; 276 terms in one sum (250 are well) or 40 nested SQRT(1+...) (30 are
   well) give #ERROR!; 64 nested IF and 62 nested SUBSTITUTE are well.
-- IronCalc: a defined name for a constant is #NAME?; names for cells and ranges are right.
+- IronCalc: a defined name for a constant is #NAME?; names for cells and ranges are right. 1E-16
+  counts as 0 in a comparison (1E-16>0 is FALSE).
 
 openpyxl writes an input with 16 significant digits, so a double may arrive one bit off.
 """

@@ -1,5 +1,6 @@
 """A recipe made into a template workbook that computes with nothing installed."""
 
+import re
 from collections.abc import Iterator, Mapping
 from contextlib import suppress
 from dataclasses import dataclass
@@ -7,6 +8,7 @@ from datetime import UTC, datetime
 from io import BytesIO
 from pathlib import Path
 from typing import Final
+from zipfile import ZIP_DEFLATED, ZipFile
 
 from openpyxl.formatting.rule import FormulaRule
 from openpyxl.styles import Alignment, Border, Font, Side
@@ -94,7 +96,7 @@ class _Builder:
             self._header(sheet, f"{letters[column.key]}{HEADER_ROW}", column.header, column.role)
             sheet.column_dimensions[letters[column.key]].width = _width(column)
         self._header(sheet, f"{status}{HEADER_ROW}", STATUS, "computed")
-        sheet.column_dimensions[status].width = 58
+        sheet.column_dimensions[status].width = 66
         sheet.row_dimensions[HEADER_ROW].height = 48
         formulas = self._formulas(table, letters) if self.plain else {}
         for row in range(FIRST_ROW, last + 1):
@@ -163,18 +165,20 @@ class _Builder:
 
     def _status(self, table: Table, cells: Cells, formulas: Mapping[str, str]) -> str:
         """Return the formula that says in words what is wrong in a row, the first thing first."""
-        filled = [
-            Expr("blank", cells.symbols[column.key])
-            for column in table.inputs
-            if column.key in table.required
-        ]
+        filled = [Expr("blank", cells.symbols[key]) for key in table.anchors]
         failed = [Expr("ISERROR", cells.symbols[key]) for key in formulas]
         words: Expr = node(ROW_OK)
         if failed:
             words = Expr("IF", any_of(failed), node(UNEXPLAINED), words)
         for problem in reversed(table.problems):
-            words = Expr("IF", broken(problem, cells), node(problem.words), words)
-        return "=" + text_of(Expr("IF", all_of(filled), node(""), words))
+            if problem.kind != "error":
+                words = Expr("IF", broken(problem, cells), node(problem.words), words)
+        words = Expr("IF", all_of(filled), node(""), words)
+        # an error value in an input would make every question about it an error too
+        for problem in reversed(table.problems):
+            if problem.kind == "error":
+                words = Expr("IF", broken(problem, cells), node(problem.words), words)
+        return "=" + text_of(words)
 
     def _validate(
         self, sheet: Worksheet, column: Column, first: str, last: int, table: Table
@@ -217,6 +221,8 @@ def broken(problem: Problem, cells: Cells) -> Expr:
     """Return the condition that holds where a row has this problem."""
     cell = cells.symbols[problem.column.key]
     blank = Expr("blank", cell)
+    if problem.kind == "error":
+        return Expr("ISERROR", cell)
     if problem.kind == "missing":
         return blank
     if problem.kind == "not a number":
@@ -224,7 +230,7 @@ def broken(problem: Problem, cells: Cells) -> Expr:
     elif problem.kind == "limit":
         limit = problem.limit
         bound = name(limit) if isinstance(limit, str) else node(limit)
-        inside = Expr(problem.comparison, cell, bound)
+        inside = Expr(problem.comparison, cell, bound * problem.factor)
         if isinstance(limit, str):
             inside = Expr("OR", Expr("blank", bound), inside)
         wrong = Expr("NOT", inside)
@@ -264,4 +270,19 @@ def build(
     builder = _Builder(recipe, formulas == "plain", rows, datetime.now(UTC))
     packed = BytesIO()
     builder.built().workbook.save(packed)
-    write_whole(path, packed.getvalue(), overwrite=overwrite)
+    write_whole(path, _without_empty_types(packed), overwrite=overwrite)
+
+
+_EMPTY_NUMBER = re.compile(rb'(<c r="[A-Z]+[0-9]+"(?: s="[0-9]+")?) t="n"( ?/>|></c>)')
+
+
+def _without_empty_types(packed: BytesIO) -> bytes:
+    """openpyxl calls an empty cell a number, which some programs then take for 0"""
+    cleaned = BytesIO()
+    with ZipFile(packed) as old, ZipFile(cleaned, "w", ZIP_DEFLATED) as new:
+        for info in old.infolist():
+            content = old.read(info)
+            if info.filename.startswith("xl/worksheets/sheet"):
+                content = _EMPTY_NUMBER.sub(rb"\1\2", content)
+            new.writestr(info, content, ZIP_DEFLATED)
+    return cleaned.getvalue()

@@ -1,17 +1,24 @@
 """A sheet's charts, on a sheet of their own where a person looks before reading."""
 
-from collections.abc import Sequence
+from itertools import cycle
 
 from openpyxl.chart import Reference, ScatterChart, Series
 from openpyxl.chart.layout import Layout, ManualLayout
 from openpyxl.chart.shapes import GraphicalProperties
 from openpyxl.worksheet.worksheet import Worksheet
 
+from cellfuncs import units
 from workbooks.recipe import Chart, Recipe, Table
 from workbooks.sheets import FIRST_ROW, INK, TITLE, TYPE_HERE, Book, letters_of, put, quoted
 
-SECOND = "B5651D"
-"""The colour of a second series: it differs in brightness too"""
+MARKERS = (
+    ("circle", TYPE_HERE),
+    ("diamond", "B5651D"),
+    ("square", INK),
+    ("triangle", "7A9BB5"),
+    ("x", "8C3B4A"),
+)
+"""Shapes and colours of the series: each differs in shape and brightness too"""
 
 
 def chart_sheet(book: Book, recipe: Recipe, table: Table, rows: int) -> None:
@@ -34,27 +41,38 @@ def _points_sheet(book: Book, table: Table, rows: int) -> Worksheet:
     points = book.sheet(f"{table.sheet.name[:24]} points")
     points.sheet_state = "hidden"
     letters = letters_of(table)
-    last = FIRST_ROW - 1 + rows
-    for place, key in enumerate(_chart_keys(table.sheet.charts), 1):
+    for place, (key, unit) in enumerate(_drawn(table), 1):
         points.cell(1, place, f"points: {key}")
+        factor = units.factor(table.columns[key].unit, unit)
+        scale = "" if factor == 1 else f"*{factor!r}"
         shown_with = [
             f"ISNUMBER({quoted(table.sheet.name)}!{letters[y]}{{row}})"
             for chart in table.sheet.charts
             if key == chart.x
             for y in chart.y
         ]
-        for row in range(FIRST_ROW, last + 1):
+        for row in range(FIRST_ROW, FIRST_ROW + rows):
             cell = f"{quoted(table.sheet.name)}!{letters[key]}{row}"
             drawn = f"ISNUMBER({cell})"
             if shown_with:
                 # a point without a result must not stretch the axis
                 drawn = f"AND({drawn},OR({','.join(shown_with).format(row=row)}))"
-            points.cell(row, place, f"=IF({drawn},{cell},NA())")
+            points.cell(row, place, f"=IF({drawn},{cell}{scale},NA())")
     return points
 
 
+def _drawn(table: Table) -> list[tuple[str, str]]:
+    """Return what is drawn and in which unit: all on one axis in that of its first column."""
+    pairs = [
+        (key, table.columns[chart.y[0] if key in chart.y else key].unit)
+        for chart in table.sheet.charts
+        for key in (chart.x, *chart.y)
+    ]
+    return list(dict.fromkeys(pairs))
+
+
 def _chart(table: Table, chart: Chart, points: Worksheet, rows: int) -> ScatterChart:
-    keys = _chart_keys(table.sheet.charts)
+    drawn_columns = _drawn(table)
     last = FIRST_ROW - 1 + rows
     drawn = ScatterChart()
     drawn.style = 2
@@ -74,11 +92,14 @@ def _chart(table: Table, chart: Chart, points: Worksheet, rows: int) -> ScatterC
     drawn.legend = drawn.legend if len(chart.y) > 1 else None
     if drawn.legend is not None:
         drawn.legend.position = "b"
-    x = Reference(points, min_col=keys.index(chart.x) + 1, min_row=FIRST_ROW, max_row=last)
-    for key, (shape, colour) in zip(
-        chart.y, (("circle", TYPE_HERE), ("diamond", SECOND), ("square", INK)), strict=False
-    ):
-        y = Reference(points, min_col=keys.index(key) + 1, min_row=FIRST_ROW, max_row=last)
+
+    def column(key: str, unit: str) -> Reference:
+        place = drawn_columns.index((key, unit)) + 1
+        return Reference(points, min_col=place, min_row=FIRST_ROW, max_row=last)
+
+    x = column(chart.x, table.columns[chart.x].unit)
+    for key, (shape, colour) in zip(chart.y, cycle(MARKERS), strict=False):
+        y = column(key, first.unit)
         series = Series(y, x, title=table.columns[key].label)
         series.marker.symbol, series.marker.size = shape, 7
         series.marker.graphicalProperties = GraphicalProperties(solidFill=colour)
@@ -88,8 +109,3 @@ def _chart(table: Table, chart: Chart, points: Worksheet, rows: int) -> ScatterC
         drawn.series.append(series)
     drawn.layout = Layout(manualLayout=ManualLayout(x=0.09, y=0.12, w=0.87, h=0.68))
     return drawn
-
-
-def _chart_keys(charts: Sequence[Chart]) -> list[str]:
-    keys = [key for chart in charts for key in (chart.x, *chart.y)]
-    return list(dict.fromkeys(keys))

@@ -1,7 +1,9 @@
 """The command `cellfuncs`."""
 
 import json
+import os
 import sys
+from contextlib import suppress
 from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
@@ -67,6 +69,8 @@ def template(
         return
     if formulas not in ("plain", "none"):
         raise typer.BadParameter(f"--formulas is {formulas!r}; it must be plain or none")
+    if output is not None and output.suffix.lower() != ".xlsx":
+        raise typer.BadParameter(f"{output}: a template is an .xlsx file")
     loaded = load(recipe)
     target = output or Path(f"{loaded.name}.xlsx")
     build.build(loaded, target, formulas=formulas, rows=rows, overwrite=overwrite)
@@ -98,7 +102,10 @@ def fill(
 
     if in_place and output is not None:
         raise typer.BadParameter("give --in-place or --output, not both")
-    target = logbook if in_place else output or logbook.with_name(f"{logbook.stem}-filled.xlsx")
+    if not logbook.name or logbook.is_dir():
+        raise typer.BadParameter(f"{logbook} is a folder, not a logbook")
+    beside = logbook.with_name(f"{logbook.stem}-filled{logbook.suffix}")
+    target = logbook if in_place else output or beside
     if not in_place and target.resolve() == logbook.resolve():
         raise typer.BadParameter(f"{target} is the logbook itself; say --in-place to write into it")
     report = filling.fill(
@@ -144,6 +151,10 @@ def main() -> None:
             stream.reconfigure(errors="replace")
     try:
         status = app(standalone_mode=False)
+        sys.stdout.flush()
+    except SystemExit as stop:
+        # a reader of a pipe has had enough, which the library takes for a failure
+        status = DONE if isinstance(stop.__context__, BrokenPipeError) else stop.code
     except typer.Exit as stop:
         status = stop.exit_code
     except typer.Abort:
@@ -153,13 +164,16 @@ def main() -> None:
     except (CellError, LogbookError, RecipeError) as error:
         status = _refused(str(error))
     except BrokenPipeError:
-        # the reader of a pipe has had enough
-        sys.stderr.close()
         status = DONE
     except OSError as error:
         status = _refused(f"{error.filename or 'a file'}: {error.strerror or error}")
     except MemoryError:
         status = _refused("the file is too large for this machine's memory")
+    with suppress(BrokenPipeError):
+        sys.stdout.flush()
+        sys.exit(status if isinstance(status, int) else DONE)
+    # nothing may be flushed at the end into a pipe that is closed
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
     sys.exit(status if isinstance(status, int) else DONE)
 
 

@@ -63,8 +63,8 @@ class Node(ABC):
     unit: str | None
 
     @abstractmethod
-    def of_row(self, row: Row) -> Any:
-        """Return the value in one row; raise the CellError that says why there is none."""
+    def in_row(self, row: Row) -> Any:
+        """Return what one row holds for this part, None where that is an empty cell"""
 
     @abstractmethod
     def of_columns(self, columns: Columns) -> Any:
@@ -73,6 +73,15 @@ class Node(ABC):
     @abstractmethod
     def of_cells(self, cells: Cells) -> Guarded:
         """Return the plain formula's expression, with its guards."""
+
+    def of_row(self, row: Row) -> Any:
+        """Return the whole formula's value in one row; raise a CellError where it has none."""
+        value = self.in_row(row)
+        if self.unit != TEXT:
+            return _number(self, value)
+        if value is None:
+            raise MissingInput("the result is empty")
+        return value
 
     def parts(self) -> Iterator["Node"]:
         """Yield this node and all below it."""
@@ -87,7 +96,7 @@ class Literal(Node):
     def unit(self) -> str | None:  # type: ignore[override]
         return TEXT if isinstance(self.value, str) else None
 
-    def of_row(self, row: Row) -> Any:
+    def in_row(self, row: Row) -> Any:
         return self.value
 
     def of_columns(self, columns: Columns) -> Any:
@@ -104,14 +113,15 @@ class Key(Node):
     key: str
     unit: str
 
-    def of_row(self, row: Row) -> Any:
+    def in_row(self, row: Row) -> Any:
         value = row.values[self.key]
         if isinstance(value, CellError):
             raise value
         return value
 
     def of_columns(self, columns: Columns) -> Any:
-        return columns.values[self.key]
+        value = columns.values[self.key]
+        return np.nan if value is None and self.unit != TEXT else value
 
     def of_cells(self, cells: Cells) -> Guarded:
         return Guarded(cells.symbols[self.key])
@@ -125,9 +135,10 @@ class Scaled(Node):
     factor: float
     unit: str
 
-    def of_row(self, row: Row) -> Any:
-        value = self.part.of_row(row)
-        return value * self.factor if isinstance(value, (int, float)) else value
+    def in_row(self, row: Row) -> Any:
+        value = self.part.in_row(row)
+        # a text or a logical goes on as it is, to be refused by name
+        return value * self.factor if type(value) in (int, float) else value
 
     def of_columns(self, columns: Columns) -> Any:
         return self.part.of_columns(columns) * self.factor
@@ -162,8 +173,8 @@ class Arithmetic(Node):
     right: Node
     unit: str | None
 
-    def of_row(self, row: Row) -> Any:
-        sides = [_number(side, side.of_row(row)) for side in (self.left, self.right)]
+    def in_row(self, row: Row) -> Any:
+        sides = [_number(side, side.in_row(row)) for side in (self.left, self.right)]
         with np.errstate(all="ignore"):
             result = float(_COMPUTE[self.operation](*sides))
         if not np.isfinite(result):
@@ -204,8 +215,8 @@ class Call(Node):
     arguments: tuple[Node | None, ...]
     unit: str
 
-    def of_row(self, row: Row) -> Any:
-        return self.function(*self._given(lambda part: part.of_row(row), row.cosmology))
+    def in_row(self, row: Row) -> Any:
+        return self.function(*self._given(lambda part: part.in_row(row), row.cosmology))
 
     def of_columns(self, columns: Columns) -> Any:
         def given(part: Node) -> Any:
@@ -267,7 +278,8 @@ def _with_default(piece: Guarded, default: Expr) -> Guarded:
 
 
 def _number(part: Node, value: Any) -> float:
-    name = part.key if isinstance(part, Key) else "a part of the formula"
+    inner = part.part if isinstance(part, Scaled) else part
+    name = inner.key if isinstance(inner, Key) else "a part of the formula"
     if value is None or value != value:
         raise MissingInput(f"{name} is empty")
     if isinstance(value, bool) or not isinstance(value, (int, float)):
@@ -276,7 +288,30 @@ def _number(part: Node, value: Any) -> float:
 
 
 def _once(items: tuple[Expr, ...]) -> tuple[Expr, ...]:
-    return tuple({repr(item): item for item in items}.values())
+    """Return the conditions without those that say the same of the same parts."""
+    return tuple({_sameness(item): item for item in items}.values())
+
+
+def _sameness(item: Expr) -> tuple[Any, ...]:
+    parts = (
+        (part.operation, part.arguments) if isinstance(part, Expr) and _is_leaf(part) else id(part)
+        for part in item.arguments
+    )
+    return (item.operation, *(item.arguments if _is_leaf(item) else parts))
+
+
+def _is_leaf(part: Expr) -> bool:
+    return part.operation in ("name", "number", "text", "truth")
+
+
+def _finite(number: Any) -> float:
+    try:
+        value = float(number)
+    except OverflowError:
+        value = np.inf
+    if not np.isfinite(value):
+        raise ExpressionError("a number in the formula is not finite")
+    return value
 
 
 _OPERATORS: Final[Mapping[type[ast.operator], str]] = {
@@ -318,7 +353,7 @@ class Parser:
             case ast.Constant(value=bool() | bytes() | complex() | None):
                 pass
             case ast.Constant(value=int() | float() as number):
-                return Literal(float(number))
+                return Literal(_finite(number))
             case ast.Constant(value=str() as text):
                 return Literal(text)
             case ast.Name(id=key):
@@ -349,6 +384,10 @@ class Parser:
         for side in (left, right):
             if side.unit == TEXT:
                 raise ExpressionError(f"a text cannot stand beside {operation}")
+        if isinstance(left, Literal) and isinstance(right, Literal):
+            with np.errstate(all="ignore"):
+                value = _COMPUTE[operation](left.value, right.value)
+            return Literal(_finite(value))
         if operation in "+-":
             if left.unit is None:
                 left = self._in_unit(left, right.unit, f"what stands left of {operation}")

@@ -17,9 +17,20 @@ from cellfuncs.physics import lines
 from cellfuncs.physics.expansion import DEFAULT, Cosmology, cosmology_from
 from workbooks.build import ROW_OK, STATUS, UNEXPLAINED
 from workbooks.expression import Call, Columns, Row
-from workbooks.logbook import ErrorValue, Logbook, LogbookError, Sheet, cell_name, parse_header
-from workbooks.recipe import Column, Problem, Recipe, Table, load, plain_key
+from workbooks.logbook import (
+    ErrorValue,
+    Header,
+    Logbook,
+    LogbookError,
+    Sheet,
+    cell_name,
+    parse_header,
+)
+from workbooks.recipe import Column, Problem, Recipe, Table, built_in, load, plain_key
 from workbooks.settings import COSMOLOGY_CELLS, OWN, SET_CELL
+
+MADE_BY: Final = "cellfuncs "
+"""How every trail begins"""
 
 COMPUTED_WITH: Final = "Computed with"
 """Header of the column that carries the trail in a logbook that is not made from a template"""
@@ -101,9 +112,14 @@ def recipe_of(logbook: Logbook) -> Recipe:
     """Return the recipe that a template's Provenance sheet names."""
     place = logbook.named_cells.get("recipe_name")
     value = _value_at(logbook, place) if place else None
-    if not isinstance(value, str):
+    if place is None or not isinstance(value, str):
         raise LogbookError(
             f"{logbook.path} does not say which recipe it was made from: name one with --recipe"
+        )
+    if value not in built_in():
+        raise LogbookError(
+            f"{_where(place)} names the recipe {value!r}, which does not come with this program: "
+            "name its file with --recipe"
         )
     return load(value)
 
@@ -237,10 +253,11 @@ def matched(sheet: Sheet, recipe: Recipe) -> Match | None:
         row = sheet.header_row(partial(_is_header, labels))
         if row is None:
             continue
+        headers = [value for value in sheet.rows[row - 1] if isinstance(value, str)]
         found = {
-            labels[folded(parse_header(str(value)).label)]
-            for value in sheet.rows[row - 1]
-            if value is not None and folded(parse_header(str(value)).label) in labels
+            labels[folded(_header_of(labels, text).label)]
+            for text in headers
+            if _is_header(labels, text)
         }
         needed = table.required or {column.key for column in table.inputs}
         if needed <= found and (best is None or len(found) > best[0]):
@@ -252,7 +269,7 @@ def matched(sheet: Sheet, recipe: Recipe) -> Match | None:
 
 
 def _is_header(labels: Mapping[str, str], text: str) -> bool:
-    return folded(parse_header(text).label) in labels
+    return folded(_header_of(labels, text).label) in labels
 
 
 def _labels(table: Table) -> dict[str, str]:
@@ -263,13 +280,18 @@ def _labels(table: Table) -> dict[str, str]:
     }
 
 
+def _header_of(labels: Mapping[str, str], text: str) -> Header:
+    """Return a header's label and unit; brackets that belong to an alias are no unit."""
+    return Header(text) if folded(text) in labels else parse_header(text)
+
+
 def _placed(sheet: Sheet, table: Table, row: int) -> Iterator[tuple[str, Place]]:
     labels = _labels(table)
     seen: dict[str, int] = {}
     for number, value in enumerate(sheet.rows[row - 1], 1):
         if not isinstance(value, str):
             continue
-        header = parse_header(value)
+        header = _header_of(labels, value)
         key = labels.get(folded(header.label))
         if key is None:
             continue
@@ -321,7 +343,8 @@ class _Filler:
         for key, place in self.places.items():
             column = self.table.columns[key]
             header = str(self.sheet.rows[self.match.header_row - 1][place.number - 1])
-            if column.is_number and column.unit and parse_header(header).unit is None:
+            unit = _header_of(_labels(self.table), header).unit
+            if column.is_number and column.unit and unit is None:
                 self.report.notes.append(
                     f"{self.match.cell(self.match.header_row, key)} names no unit; "
                     f"taken as {column.unit}, the recipe's"
@@ -347,9 +370,7 @@ class _Filler:
         return None if place is None else self.sheet.rows[row - 1][place.number - 1]
 
     def _in_use(self, row: int) -> bool:
-        """A row counts once an input that it cannot do without is filled: remarks stay remarks"""
-        wanted = self.table.required or {column.key for column in self.table.inputs}
-        return any(self._cell(row, key) is not None for key in wanted)
+        return any(self._cell(row, key) is not None for key in self.table.anchors)
 
     def _raw(self, column: Column, numbers: Sequence[int]) -> list[Any]:
         """Return the cells of an input in the recipe's unit; what is no number stays as it is."""
@@ -392,7 +413,7 @@ class _Filler:
         columns.values[key] = (  # type: ignore[index]
             np.array([np.nan if isinstance(v, CellError) else v for v in values], dtype=float)
             if is_number
-            else computed
+            else np.array([None if isinstance(v, CellError) else v for v in values], dtype=object)
         )
         raw[key] = values  # type: ignore[index]
         return list(values)
@@ -411,18 +432,21 @@ class _Filler:
         words_at = self._status_column()
         trail_at = None if self.ours else self._trail_column(targets)
         made_with = trail(self.cosmology if self._uses_cosmology() else None)
+        self._clear_abandoned(set(numbers), targets, trail_at)
         for index, row in enumerate(numbers):
             problems = list(self._problems(index, raw))
             missing = any(problem.kind == "missing" for problem in problems)
             failed = False
             for key, place in targets.items():
                 value = results[key][index]
-                failed |= self._set(row, place, value, missing)
+                failed |= self._set(row, place, value, missing, self._is_ours(row, trail_at))
             remarks = [self._remark(row, problem, raw, index) for problem in problems]
             failed = failed or missing
             if failed:
                 self.report.refused += 1
                 self.report.refusals += remarks or self._unexplained(row, results, index, targets)
+                if trail_at is not None and self._at(row, trail_at) is not None:
+                    self.sheet.set(row, trail_at, None)
             else:
                 self.report.filled += 1
                 self.report.doubts += remarks
@@ -432,10 +456,30 @@ class _Filler:
                 first = problems[0].words if problems else UNEXPLAINED if failed else ROW_OK
                 self.sheet.set(row, words_at, first)
 
-    def _set(self, row: int, place: Place, value: Any, missing: bool) -> bool:
+    def _is_ours(self, row: int, trail_at: int | None) -> bool:
+        """Tell whether an earlier filling made this row's results"""
+        if trail_at is None:
+            return True
+        made_with = self._at(row, trail_at)
+        return isinstance(made_with, str) and made_with.startswith(MADE_BY)
+
+    def _clear_abandoned(
+        self, in_use: set[int], targets: Mapping[str, Place], trail_at: int | None
+    ) -> None:
+        """Take back what an earlier filling wrote into rows whose inputs are gone"""
+        if trail_at is None:
+            return
+        for row in self._row_numbers():
+            if row not in in_use and self._is_ours(row, trail_at):
+                for number in (*(place.number for place in targets.values()), trail_at):
+                    if self._at(row, number) is not None:
+                        self.sheet.set(row, number, None)
+
+    def _set(self, row: int, place: Place, value: Any, missing: bool, ours: bool) -> bool:
         """Write one result; tell whether it is an error that belongs in the report."""
         formula = self.sheet.has_formula(row, place.number)
-        if not formula and isinstance(self._at(row, place.number), str):
+        text_of_ours = ours and not place.column.is_number
+        if not formula and not text_of_ours and isinstance(self._at(row, place.number), str):
             self.report.doubts.append(
                 Remark(
                     f"{self.sheet.name}!{cell_name(row, place.number)}",
@@ -474,6 +518,8 @@ class _Filler:
                 yield problem
 
     def _broken(self, problem: Problem, value: Any) -> bool:
+        if problem.kind == "error" or isinstance(value, CellError):
+            return problem.kind == "error" and isinstance(value, CellError)
         if problem.kind == "missing" or value is None:
             return problem.kind == "missing" and value is None
         if problem.kind == "not a number":
@@ -484,7 +530,7 @@ class _Filler:
             if bound is None or type(value) is not float:
                 return False
             if isinstance(limit, str):
-                bound *= units.factor(self._unit_of(limit), problem.column.unit)
+                bound *= problem.factor
             return not {
                 ">": value > bound,
                 ">=": value >= bound,
@@ -495,17 +541,12 @@ class _Filler:
             return True
         if problem.kind == "not a choice":
             choices = [choice.casefold() for choice in problem.column.choices]
-            return value.strip().casefold() not in choices
+            return value.strip(" ").casefold() not in choices
         try:
             lines.find(value)
         except CellError:
             return True
         return False
-
-    def _unit_of(self, key: str) -> str:
-        if key in self.recipe.settings:
-            return self.recipe.settings[key].unit
-        return next(cell.unit for cell in COSMOLOGY_CELLS if cell.cell == key)
 
     def _remark(
         self, row: int, problem: Problem, raw: Mapping[str, list[Any]], index: int

@@ -6,9 +6,9 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from importlib.resources import files
 from pathlib import Path
-from typing import Any, Final, Literal
+from typing import Annotated, Any, Final, Literal
 
-from pydantic import BaseModel, ConfigDict, ValidationError
+from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from cellfuncs import units
 from cellfuncs.bridges.formula import FormulaError
@@ -18,7 +18,8 @@ from cellfuncs.families.spectrum import LineName
 from cellfuncs.physics.expansion import PUBLISHED
 from cellfuncs.symbols import NotTraceable, name
 from workbooks.expression import TEXT, Call, Cells, ExpressionError, Key, Node, Parser, Scaled
-from workbooks.settings import COSMOLOGY_CELLS, COSMOLOGY_KEYS
+from workbooks.logbook import Header, parse_header
+from workbooks.settings import COSMOLOGY_CELLS, COSMOLOGY_KEYS, reserved_names
 
 BUILT_IN: Final = files("workbooks") / "recipes"
 
@@ -31,13 +32,19 @@ class Model(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True)
 
 
+Finite = Annotated[float, Field(strict=True, allow_inf_nan=False)]
+Text = Annotated[str, Field(strict=True, pattern=r"^[^\x00-\x08\x0b\x0c\x0e-\x1f]*$")]
+Count = Annotated[int, Field(strict=True, ge=1, le=1_000_000)]
+Choices = Annotated[tuple[Text, ...], Field(max_length=100)]
+
+
 class Limited(Model):
     """Limits of a number; a text names the setting that holds the limit."""
 
-    above: float | str | None = None
-    at_least: float | str | None = None
-    below: float | str | None = None
-    at_most: float | str | None = None
+    above: Finite | Text | None = None
+    at_least: Finite | Text | None = None
+    below: Finite | Text | None = None
+    at_most: Finite | Text | None = None
 
     def limits(self) -> Iterator[tuple[str, float | str]]:
         """Yield comparison and limit of each limit that is given."""
@@ -52,30 +59,30 @@ class Limited(Model):
 
 
 class Setting(Limited):
-    key: str
-    label: str
-    group: str
-    unit: str = ""
+    key: Text
+    label: Text
+    group: Text
+    unit: Text = ""
     kind: Literal["number", "text"] = "number"
-    value: float | str | None = None
-    choices: tuple[str, ...] = ()
-    format: str = ""
-    note: str = ""
+    value: Finite | Text | None = None
+    choices: tuple[Text, ...] = ()
+    format: Text = ""
+    note: Text = ""
 
 
 class Column(Limited):
-    key: str
-    label: str
+    key: Text
+    label: Text
     role: Literal["input", "computed"]
     kind: Literal["number", "text", "line"] = "number"
-    unit: str = ""
-    formula: str = ""
-    choices: tuple[str, ...] = ()
-    required: bool | None = None
-    format: str = ""
-    width: float | None = None
-    note: str = ""
-    aliases: tuple[str, ...] = ()
+    unit: Text = ""
+    formula: Text = ""
+    choices: tuple[Text, ...] = ()
+    required: Annotated[bool, Field(strict=True)] | None = None
+    format: Text = ""
+    width: Finite | None = None
+    note: Text = ""
+    aliases: tuple[Text, ...] = ()
 
     @property
     def header(self) -> str:
@@ -87,27 +94,27 @@ class Column(Limited):
 
 
 class Chart(Model):
-    title: str
-    x: str
-    y: tuple[str, ...]
-    y_label: str = ""
+    title: Text
+    x: Text
+    y: Annotated[tuple[Text, ...], Field(min_length=1)]
+    y_label: Text = ""
 
 
 class Sheet(Model):
-    name: str
-    rows: int = 200
-    intro: str = ""
-    columns: tuple[Column, ...]
+    name: Text
+    rows: Count = 200
+    intro: Text = ""
+    columns: Annotated[tuple[Column, ...], Field(min_length=1)]
     charts: tuple[Chart, ...] = ()
 
 
-class Text(Model):
-    title: str
-    purpose: str
-    steps: tuple[str, ...] = ()
-    cosmology: str = ""
+class Document(Model):
+    title: Text
+    purpose: Text
+    steps: tuple[Text, ...] = ()
+    cosmology: Text = ""
     settings: tuple[Setting, ...] = ()
-    sheets: tuple[Sheet, ...]
+    sheets: Annotated[tuple[Sheet, ...], Field(min_length=1)]
 
 
 @dataclass(frozen=True)
@@ -115,10 +122,13 @@ class Problem:
     """What can be said of a row before anything is computed: the first one found is shown."""
 
     column: Column
-    kind: Literal["missing", "not a number", "limit", "not a choice", "not a line"]
+    kind: Literal["error", "missing", "not a number", "limit", "not a choice", "not a line"]
     words: str
     comparison: str = ""
     limit: float | str = 0.0
+    """A number in the column's unit, or a setting's key"""
+    factor: float = 1.0
+    """What takes the setting's unit to the column's"""
 
 
 @dataclass(frozen=True)
@@ -131,6 +141,16 @@ class Table:
     required: frozenset[str]
     """Inputs that a row cannot do without"""
     problems: tuple[Problem, ...]
+    used: frozenset[str]
+    """Inputs that some formula names"""
+
+    @property
+    def anchors(self) -> list[str]:
+        """Inputs whose being filled puts a row to use: remarks and choices made ahead do not"""
+        keys = [
+            column.key for column in self.inputs if column.key in self.used and not column.choices
+        ]
+        return keys or [column.key for column in self.inputs]
 
     @property
     def columns(self) -> dict[str, Column]:
@@ -151,7 +171,7 @@ class Recipe:
 
     name: str
     source: str
-    text: Text
+    text: Document
     tables: tuple[Table, ...]
 
     @property
@@ -205,15 +225,17 @@ def read(content: bytes, source: str, recipe_name: str) -> Recipe:
     except RecursionError:
         raise RecipeError(f"{source}: nested too deep") from None
     try:
-        parsed = Text.model_validate(raw)
+        parsed = Document.model_validate(raw)
     except ValidationError as error:
         raise _refusal(error, place) from None
     return _Checker(parsed, place, recipe_name).recipe()
 
 
 def _refusal(error: ValidationError, place: "_Places") -> RecipeError:
-    first = error.errors()[0]
-    path = tuple(first["loc"])
+    # a key that is not known explains one that is missing
+    problems = sorted(error.errors(), key=lambda each: each["type"] != "extra_forbidden")
+    first = problems[0]
+    path = _to_key(tuple(first["loc"]))
     key = path[-1] if path else ""
     if first["type"] == "extra_forbidden":
         known = _fields(path)
@@ -221,6 +243,22 @@ def _refusal(error: ValidationError, place: "_Places") -> RecipeError:
     if first["type"] == "missing":
         return place.error(path[:-1], f"the key {key!r} is missing")
     return place.error(path, f"{key!r}: {first['msg'].lower()}")
+
+
+def _to_key(path: tuple[int | str, ...]) -> tuple[int | str, ...]:
+    """Return a path without what it leads to inside a key: an item's number, a type's name."""
+    steps: list[int | str] = []
+    for step in path:
+        if (
+            steps
+            and isinstance(steps[-1], str)
+            and not (
+                isinstance(step, int) and steps[-1] in ("sheets", "columns", "charts", "settings")
+            )
+        ):
+            break
+        steps.append(step)
+    return tuple(steps)
 
 
 def _fields(path: tuple[int | str, ...]) -> list[str]:
@@ -232,7 +270,7 @@ def _fields(path: tuple[int | str, ...]) -> list[str]:
         "settings": Setting,
     }
     inside = [models[step] for step in path[:-1] if isinstance(step, str) and step in models]
-    return list((inside or [Text])[-1].model_fields)
+    return list((inside or [Document])[-1].model_fields)
 
 
 @dataclass
@@ -267,13 +305,16 @@ class _Places:
         return RecipeError(f"{self.source}, line {self.line(path)}: {message}")
 
 
+LONGEST_LIST: Final = 255
+"""Characters that a spreadsheet takes in a list of choices"""
+
 _WORD = re.compile(r"[a-z][a-z0-9]*(_[a-z0-9]+)*\Z")
 _CELL = re.compile(r"([a-z]{1,3}\d+|r\d*c\d*|r|c|true|false)\Z")
 
 
 @dataclass
 class _Checker:
-    text: Text
+    text: Document
     place: _Places
     name: str
     settings: dict[str, str] = field(default_factory=dict)
@@ -291,13 +332,13 @@ class _Checker:
                     ("cosmology",), f"{self.text.cosmology!r} is not a published set ({near})"
                 )
             self.settings.update(COSMOLOGY_KEYS)
+        reserved = reserved_names()
         for index, setting in enumerate(self.text.settings):
             path = ("settings", index)
-            self._key_is_good(path, setting.key, self.settings)
+            self._key_is_good(path, setting.key, {**dict.fromkeys(reserved), **self.settings})
             self._unit_is_good(path, setting.unit)
+            self._setting_is_good(path, setting)
             self.settings[setting.key] = setting.unit if setting.kind == "number" else TEXT
-        if not self.text.sheets:
-            raise self.place.error((), "a recipe needs at least one sheet")
         titles = [sheet.name.casefold() for sheet in self.text.sheets]
         tables = []
         for index, sheet in enumerate(self.text.sheets):
@@ -321,6 +362,13 @@ class _Checker:
             )
         if key in taken:
             raise self.place.error(path, f"{key!r} is taken already")
+
+    def _setting_is_good(self, path: tuple[int | str, ...], setting: Setting) -> None:
+        if setting.value is not None and isinstance(setting.value, str) != (setting.kind == "text"):
+            raise self.place.error(
+                (*path, "value"),
+                f"the value {setting.value!r} of {setting.key!r} is no {setting.kind}",
+            )
 
     def _unit_is_good(self, path: tuple[int | str, ...], unit: str) -> None:
         try:
@@ -355,7 +403,13 @@ class _Checker:
         self._charts_are_good(path, sheet, known)
         ordered = self._ordered(path, sheet, nodes)
         required = frozenset(_required(sheet, ordered))
-        return Table(sheet, ordered, required, tuple(self._problems(sheet, ordered, required)))
+        return Table(
+            sheet,
+            ordered,
+            required,
+            tuple(self._problems(sheet, ordered, required)),
+            frozenset(parser.used),
+        )
 
     def _column_is_good(self, path: tuple[int | str, ...], column: Column) -> None:
         if column.role == "computed" and not column.formula:
@@ -364,18 +418,39 @@ class _Checker:
             raise self.place.error((*path, "formula"), f"{column.key!r} is an input, not computed")
         if not column.label.strip():
             raise self.place.error((*path, "label"), f"{column.key!r} needs a label")
-        for comparison, limit in column.limits():
-            if isinstance(limit, str) and self.settings.get(limit, TEXT) == TEXT:
+        plain = Header(" ".join(column.label.split()), column.unit or None)
+        if parse_header(column.header) != plain or parse_header(column.label).unit is not None:
+            raise self.place.error(
+                (*path, "label"), f"{column.label!r}: brackets in a label would be read as a unit"
+            )
+        if any(set(choice) & set(',"') for choice in column.choices):
+            raise self.place.error(
+                (*path, "choices"), "a choice cannot hold a comma or a quotation mark"
+            )
+        if len(",".join(column.choices)) > LONGEST_LIST:
+            raise self.place.error(
+                (*path, "choices"), f"the choices have more than {LONGEST_LIST} characters together"
+            )
+        for word in ("above", "at_least", "below", "at_most"):
+            self._limit_is_good((*path, word), column, getattr(column, word))
+
+    def _limit_is_good(
+        self, path: tuple[int | str, ...], column: Column, limit: float | str | None
+    ) -> None:
+        if limit is None:
+            return
+        if not column.is_number:
+            raise self.place.error(path, f"{column.key!r} is text; {path[-1]} does not fit")
+        if isinstance(limit, str):
+            if self.settings.get(limit, TEXT) == TEXT:
                 near = near_matches(limit, self.settings)
                 raise self.place.error(
                     path, f"the limit {limit!r} of {column.key!r} is not a setting ({near})"
                 )
-            if isinstance(limit, str) and not units.same_kind(self.settings[limit], column.unit):
+            if not units.same_kind(self.settings[limit], column.unit):
                 raise self.place.error(
                     path, f"the limit {limit!r} and {column.key!r} are of different kinds"
                 )
-            if not column.is_number:
-                raise self.place.error(path, f"{column.key!r} is text; {comparison} does not fit")
 
     def _labels_differ(self, path: tuple[int | str, ...], sheet: Sheet) -> None:
         taken: dict[str, str] = {}
@@ -393,11 +468,11 @@ class _Checker:
     ) -> None:
         for index, chart in enumerate(sheet.charts):
             where = (*path, "charts", index)
-            for key in (chart.x, *chart.y):
+            for axis, key in (("x", chart.x), *(("y", key) for key in chart.y)):
                 if known.get(key, TEXT) == TEXT:
                     near = near_matches(key, [each for each in known if known[each] != TEXT])
                     raise self.place.error(
-                        where, f"{key!r} is not a column of numbers of this sheet ({near})"
+                        (*where, axis), f"{key!r} is not a column of numbers of this sheet ({near})"
                     )
             for key in chart.y[1:]:
                 if not units.same_kind(known[key], known[chart.y[0]]):
@@ -413,6 +488,10 @@ class _Checker:
             tree.of_cells(cells).formula(when_blank=None)
         except FormulaError as error:
             raise self.place.error(path, f"{column.key!r}: {error}") from None
+        except RecursionError:
+            raise self.place.error(
+                path, f"{column.key!r}: the formula is nested too deep"
+            ) from None
         except NotTraceable:
             return
 
@@ -444,6 +523,8 @@ class _Checker:
         """Yield what can be wrong with the inputs, in the order to tell a person."""
         inputs = [column for column in sheet.columns if column.role == "input"]
         for column in inputs:
+            yield Problem(column, "error", f"{column.label} holds an error value")
+        for column in inputs:
             if column.key in required:
                 yield Problem(column, "missing", f"{column.label} is missing")
         for column in inputs:
@@ -461,13 +542,19 @@ class _Checker:
                         f"{column.label} must be {_WORDS[comparison]} {words}",
                         comparison,
                         limit,
+                        units.factor(self.settings[limit], column.unit)
+                        if isinstance(limit, str)
+                        else 1.0,
                     )
             elif column.choices:
                 allowed = " or ".join(column.choices)
                 yield Problem(column, "not a choice", f"{column.label} must be {allowed}")
             elif column.kind == "line":
                 yield Problem(
-                    column, "not a line", f"{column.label} is not in the sheet of line names"
+                    column,
+                    "not a line",
+                    f"{column.label}: no such name, or one of several lines; "
+                    "see the sheet Line names",
                 )
 
 

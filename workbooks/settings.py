@@ -3,6 +3,7 @@
 from dataclasses import dataclass
 from typing import Final
 
+from cellfuncs.bridges.formula import HIDDEN_TABLES, derived_settings
 from cellfuncs.physics.expansion import PARAMETERS
 
 OWN: Final = "own"
@@ -51,6 +52,31 @@ COSMOLOGY_CELLS: Final = (
     CosmologyCell("neutrino_mass_3", "m_nu", 3),
 )
 """The names are those of bridges.formula.SETTINGS_COSMOLOGY"""
+
+
+def reserved_names() -> set[str]:
+    """Return the names of cells that every workbook needs for itself."""
+    own = {cell.own_cell for cell in COSMOLOGY_CELLS} | {cell.cell for cell in COSMOLOGY_CELLS}
+    published = {f"published_{cell.cell}" for cell in COSMOLOGY_CELLS}
+    return (
+        {SET_CELL, "published_set", "line_name", "omega_dark_energy_own", *PROVENANCE_CELLS}
+        | own
+        | published
+        | set(HIDDEN_TABLES)
+        | set(derived_settings())
+    )
+
+
+PROVENANCE_CELLS: Final = (
+    "recipe_name",
+    "template_version",
+    "template_made",
+    "template_constants",
+    "cosmology_in_use",
+    "template_ephemeris",
+    "template_earth_orientation",
+    "last_filled",
+)
 
 COSMOLOGY_KEYS: Final = {cell.cell: cell.unit for cell in COSMOLOGY_CELLS}
 """What a recipe's formulas may name of the cosmology, with units"""

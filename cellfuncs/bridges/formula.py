@@ -10,12 +10,11 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
-from cellfuncs.catalogue import Argument, CosmologySet, Function, Number, Word
+from cellfuncs.catalogue import Argument, CosmologySet, Function, Number
 from cellfuncs.errors import CellError
-from cellfuncs.families.spectrum import LineName
 from cellfuncs.physics import expansion, lines
 from cellfuncs.physics.expansion import Cosmology
-from cellfuncs.symbols import Expr, NotTraceable, build, name, node, number_of
+from cellfuncs.symbols import Expr, NotTraceable, build, name, node
 
 LONGEST: Final = 8192
 """Characters that Excel takes in one formula."""
@@ -65,6 +64,20 @@ class FormulaError(CellError):
     """No plain formula can be written for this."""
 
 
+def leaves(expr: Expr) -> int:
+    """Return how many leaves an expression has once it is written out."""
+    counted: dict[int, int] = {}
+
+    def count(each: Expr) -> int:
+        inside = [part for part in each.arguments if isinstance(part, Expr)]
+        for part in inside:
+            if id(part) not in counted:
+                counted[id(part)] = count(part)
+        return sum(counted[id(part)] for part in inside) or 1
+
+    return count(expr)
+
+
 def is_vector(expr: Expr) -> bool:
     """Tell whether an expression has a value a row of a hidden table."""
     if expr.operation == "name":
@@ -109,13 +122,8 @@ def _rendered(expr: Expr) -> tuple[str, int]:
 
 def _infix(operation: str, left: Expr, right: Expr) -> tuple[str, int]:
     rank = _RANK[operation]
-    if operation == "^" and left.operation in ("EXP", "^") and number_of(right) is not None:
-        inner = left.arguments if left.operation == "^" else (None, left.arguments[0])
-        power = build("*", inner[1], right)
-        return _rendered(
-            Expr("EXP", power) if left.operation == "EXP" else Expr("^", inner[0], power)
-        )
-    if operation == "^" and left.operation == "EXP" and is_vector(left):
+    # (eˣ)ᵃ is e^(ax); a root of a square is not so simple
+    if operation == "^" and left.operation == "EXP":
         return _rendered(Expr("EXP", build("*", left.arguments[0], right)))
     # left to right, as the definition computed it: float sums depend on the order
     return f"{_operand(left, rank)}{operation}{_operand(right, rank + 1)}", rank
@@ -163,7 +171,8 @@ class Guarded:
     typed: tuple[Expr, ...] = ()
     """Conditions that a text in place of a number breaks"""
     allowed: tuple[Expr, ...] = ()
-    """Conditions that a number out of its domain breaks"""
+    """Conditions that a number out of its domain breaks, the inner ones first: an outer one may
+    only be asked where they hold"""
 
     def formula(self, when_blank: Expr | None = None) -> str:
         """Return the whole formula, equals sign included.
@@ -171,13 +180,16 @@ class Guarded:
         An empty cell gives `when_blank`, left out: #N/A.
         """
         expr = self.value
-        if self.allowed:
-            expr = Expr("IF", all_of(self.allowed), expr, Expr("#NUM!"))
+        for condition in reversed(self.allowed):
+            expr = Expr("IF", condition, expr, Expr("#NUM!"))
         if self.typed:
             expr = Expr("IF", all_of(self.typed), expr, Expr("#VALUE!"))
         if self.blank:
             empty = any_of(tuple(Expr("blank", cell) for cell in self.blank))
             expr = Expr("IF", empty, Expr("NA") if when_blank is None else when_blank, expr)
+        # parts are shared, so a formula may be endless in text though small in memory
+        if leaves(expr) > LONGEST:
+            raise FormulaError(f"the plain formula is far longer than {LONGEST} characters")
         text = "=" + text_of(expr)
         if len(text) > LONGEST:
             raise FormulaError(
@@ -239,22 +251,29 @@ def guarded(made: Function, given: Mapping[str, Any]) -> Guarded:
     value = made.traced(**values)
     if value.operation != "name" and mentions(value, "omega_photon"):
         allowed.append(name("expansion_holds"))
-    return Guarded(value, tuple(blank), tuple(typed), tuple(allowed))
+    return Guarded(value, tuple(blank), tuple(typed), (all_of(allowed),) if allowed else ())
 
 
 def mentions(expr: Expr, cell: str) -> bool:
     """Tell whether an expression names a cell."""
-    return (expr.operation == "name" and expr.arguments[0] == cell) or any(
-        isinstance(each, Expr) and mentions(each, cell) for each in expr.arguments
-    )
+    seen: set[int] = set()
+    waiting = [expr]
+    while waiting:
+        each = waiting.pop()
+        if each.operation == "name" and each.arguments[0] == cell:
+            return True
+        fresh = [part for part in each.arguments if isinstance(part, Expr) and id(part) not in seen]
+        seen.update(map(id, fresh))
+        waiting += fresh
+    return False
 
 
 def _guard(argument: Argument, value: Expr, typed: list[Expr], allowed: list[Expr]) -> None:
     if isinstance(argument, Number):
-        typed.append(Expr("ISNUMBER", value))
+        # what is computed inside has guards of its own
+        if value.operation == "name" or (value.operation == "IF" and argument.optional):
+            typed.append(Expr("ISNUMBER", value))
         allowed.extend(limits(argument, value))
-    elif isinstance(argument, LineName) or not isinstance(argument, Word):
-        return
 
 
 def derived_settings() -> dict[str, Expr]:

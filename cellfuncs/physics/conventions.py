@@ -16,11 +16,16 @@ NAMES: Final = ("relativistic", "optical", "radio")
 
 def velocity_from_redshift(z: Real, convention: Any) -> Real:
     """Return the velocity of a redshift z > -1."""
+
+    def relativistic() -> Real:
+        # c((1+z)²−1)/((1+z)²+1) without the difference, which would lose a small z, and divided by
+        # (1+z)², which would overflow
+        shrink = 1 / (1 + z)
+        return LIGHT_SPEED * (z * shrink) * (1 + shrink) / (1 + shrink**2)
+
     return choose(
         convention,
-        # c((1+z)²−1)/((1+z)²+1) without the difference, which would lose a small z
-        # … and with 1+z divided out, which its square would overflow
-        relativistic=lambda: LIGHT_SPEED * (z / (1 + z)) * (1 + 1 / (1 + z)) / (1 + (1 / (1 + z)) ** 2),
+        relativistic=relativistic,
         optical=lambda: LIGHT_SPEED * z,
         radio=lambda: LIGHT_SPEED * (z / (1 + z)),
     )

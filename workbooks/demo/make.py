@@ -13,6 +13,7 @@ from typing import Any
 
 from openpyxl import Workbook
 from openpyxl.styles import Font
+from openpyxl.worksheet.properties import PageSetupProperties
 from openpyxl.worksheet.worksheet import Worksheet
 
 from cellfuncs.physics import lines, refraction
@@ -62,6 +63,9 @@ def heading(sheet: Worksheet, title: str, headers: list[str]) -> None:
         for row in range(5, 45):
             sheet.cell(row, place).number_format = RESULTS.get(header, "General")
     sheet.freeze_panes = "A5"
+    sheet.page_setup.orientation = "landscape"
+    sheet.page_setup.fitToHeight = 0
+    sheet.sheet_properties.pageSetUpPr = PageSetupProperties(fitToPage=True)
 
 
 def put(sheet: Worksheet, row: int, cells: list[Any]) -> None:
