@@ -406,7 +406,10 @@ def test_fill_writes_what_libreoffice_recalculates(
 
 STATUS_WORDS: dict[str, list[tuple[Row, str]]] = {
     "line-log": [
-        ({"line": "Halfa", "observed": 6686.0}, "Line: no such name, or one of several lines; see the sheet Line names"),
+        (
+            {"line": "Halfa", "observed": 6686.0},
+            "Line: no such name, or one of several lines; see the sheet Line names",
+        ),
         ({"line": "H alpha", "observed": "6586 A"}, "Observed wavelength is not a number"),
         ({"line": "H alpha"}, "Observed wavelength is missing"),
         ({"observed": 6700.0}, "Line is missing"),
