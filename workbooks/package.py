@@ -428,9 +428,10 @@ def write_whole(path: Path, content: bytes, *, overwrite: bool = False) -> os.st
 # comments, CDATA and foreign namespaces lie; these are blanked in a copy of equal length. What is
 # left has a form simple enough for regular expressions, whose offsets hold for the original too.
 
-# Possessive, so that a hostile part cannot make these backtrack.
-_ATTRIBUTES = rb"""[^<>"'/]*+(?:(?:"[^"<]*+"|'[^'<]*+')[^<>"'/]*+)*+"""
-_TAG = re.compile(rb"</?[^\s/>]++" + _ATTRIBUTES + rb"/?>")
+# Each alternative begins with a character of its own, so that nothing here backtracks far.
+# (Possessive quantifiers would say so, but the re of Python 3.11.2, Debian 12's, loses groups.)
+_ATTRIBUTES = rb"""[^<>"'/]*(?:(?:"[^"<]*"|'[^'<]*')[^<>"'/]*)*"""
+_TAG = re.compile(rb"</?[^\s/>]+" + _ATTRIBUTES + rb"/?>")
 _TYPE = re.compile(rb"""\s+t\s*=\s*(?:"[^"]*"|'[^']*')""")
 _VALUE_METADATA = re.compile(rb"""\s+vm\s*=\s*(?:"[^"]*"|'[^']*')""")
 _COUNT = re.compile(rb"""\s+(?:count|uniqueCount)\s*=\s*(?:"[^"]*"|'[^']*')""")
@@ -604,28 +605,28 @@ class SheetPart:
         def element(local_name: bytes, attributes: bytes, inside: bytes) -> bytes:
             """Return the pattern of an element that is empty or holds `inside`."""
             opening = rb"<" + name + local_name + rb"(?=[\s/>])" + attributes
-            return opening + rb"(?:/>|>" + inside + rb"</" + name + local_name + rb"\s*+>)"
+            return opening + rb"(?:/>|>" + inside + rb"</" + name + local_name + rb"\s*>)"
 
         def anything_but_end(local_name: bytes) -> bytes:
-            return rb"[^<]*+(?:<(?!/" + name + local_name + rb"[\s>])[^<]*+)*+"
+            return rb"[^<]*(?:<(?!/" + name + local_name + rb"[\s>])[^<]*)*"
 
         self._row = re.compile(
-            rb"<(" + any_prefix + rb")row(?: r=\"([0-9]{1,7})\")?+(?=[\s/>])"
+            rb"<(" + any_prefix + rb")row(?: r=\"([0-9]{1,7})\")?(?=[\s/>])"
             rb"(" + _ATTRIBUTES + rb")(/?)>"
         )
-        self._row_end = re.compile(rb"</" + name + rb"row\s*+>")
-        formula = element(rb"f", rb"(?P<formula_attributes>" + _ATTRIBUTES + rb")", rb"[^<]*+")
-        value = element(rb"v", _ATTRIBUTES, rb"(?P<stored>[^<]*+)")
+        self._row_end = re.compile(rb"</" + name + rb"row\s*>")
+        formula = element(rb"f", rb"(?P<formula_attributes>" + _ATTRIBUTES + rb")", rb"[^<]*")
+        value = element(rb"v", _ATTRIBUTES, rb"(?P<stored>[^<]*)")
         inline = element(rb"is", _ATTRIBUTES, anything_but_end(rb"is"))
         # The order of a cell's children is fixed: f, v, is, extLst (ECMA-376 part 1, 18.3.1.4).
         # The common ` r="A1"` has groups of its own because taking attributes apart is slow.
         self._cell = re.compile(
             rb"<(?P<prefix>" + any_prefix + rb")c"
-            rb"(?P<name> r=\"(?P<letters>[A-Z]{1,3})(?P<digits>[0-9]{1,7})\")?+(?=[\s/>])"
+            rb"(?P<name> r=\"(?P<letters>[A-Z]{1,3})(?P<digits>[0-9]{1,7})\")?(?=[\s/>])"
             rb"(?P<attributes>" + _ATTRIBUTES + rb")"
-            rb"(?:/>|>(?P<formula>\s*+" + formula + rb")?+"
-            rb"(?P<gap>\s*+)(?P<value>" + value + rb")?+(?P<inline>\s*+" + inline + rb")?+"
-            rb"(?P<rest>" + anything_but_end(rb"c") + rb")</" + name + rb"c\s*+>)"
+            rb"(?:/>|>(?P<formula>\s*" + formula + rb")?"
+            rb"(?P<gap>\s*)(?P<value>" + value + rb")?(?P<inline>\s*" + inline + rb")?"
+            rb"(?P<rest>" + anything_but_end(rb"c") + rb")</" + name + rb"c\s*>)"
         )
         self._misplaced = re.compile(rb"<" + name + rb"(?:f|v|is)[\s/>]")
         opening = self._element(rb"sheetData")

@@ -1,6 +1,13 @@
 # Sourced by workbooks/demo/run and tests/run: what a bare Debian machine needs before either.
 
-python=${PYTHON:-python3}
+# Debian's own Python first: it is the one that staff have, and the one that LibreOffice runs
+python=${PYTHON:-}
+if [ -z "$python" ]; then
+    python=python3
+    if /usr/bin/python3 -c 'import sys; sys.exit(sys.version_info < (3, 11))' 2>/dev/null; then
+        python=/usr/bin/python3
+    fi
+fi
 
 # bring PACKAGE ... : install Debian packages, as root or through sudo
 bring() {
