@@ -21,6 +21,7 @@ from cellfuncs.families.workbook import provenance
 from cellfuncs.symbols import Expr, NotTraceable, name, node
 from workbooks import supporting
 from workbooks.charts import chart_sheet
+from workbooks.connect import SPELLING
 from workbooks.expression import Cells
 from workbooks.package import write_whole
 from workbooks.recipe import Column, Problem, Recipe, Table, lines_wanted
@@ -53,12 +54,43 @@ ROW_OK: Final = "ok"
 UNEXPLAINED: Final = "no result: look at this row's inputs and at the sheet Settings"
 
 
+@dataclass(frozen=True)
+class Formulas:
+    """What a template's computed cells hold: see `Cells.calls`, and what a user must have"""
+
+    written: bool
+    calls: str | None = None
+    needs: str = ""
+
+
+FORMULAS: Final = {
+    "plain": Formulas(True),
+    "none": Formulas(
+        False, None, "The computed columns are empty until the command «cellfuncs fill» fills them."
+    ),
+    "calc": Formulas(
+        True,
+        SPELLING,
+        "This file computes in LibreOffice Calc, connected with «cellfuncs connect calc». Excel "
+        "spells the functions of an add-in otherwise and has a file of its own.",
+    ),
+    "excel": Formulas(
+        True,
+        "",
+        "This file computes in Excel, connected with «cellfuncs connect excel». LibreOffice Calc "
+        "spells the functions of an add-in otherwise and has a file of its own.",
+    ),
+}
+"""By name. Calc knows an add-in's function in a file by its whole name, Excel by its short one:
+no spelling serves both, so calls of the add-in make two files."""
+
+
 @dataclass
 class _Builder:
     """Makes one workbook."""
 
     recipe: Recipe
-    plain: bool
+    formulas: Formulas
     rows: int | None
     made: datetime
 
@@ -72,7 +104,7 @@ class _Builder:
         supporting.settings_sheet(self.book, self.recipe)
         if lines_wanted(self.recipe):
             supporting.line_sheet(self.book)
-        supporting.how_to_sheet(self.book, self.recipe)
+        supporting.how_to_sheet(self.book, self.recipe, self.formulas.needs)
         supporting.provenance_sheet(self.book, self.recipe, self.made)
         supporting.hidden_tables(self.book, self.recipe)
         workbook = self.book.workbook
@@ -98,7 +130,7 @@ class _Builder:
         self._header(sheet, f"{status}{HEADER_ROW}", STATUS, "computed")
         sheet.column_dimensions[status].width = 66
         sheet.row_dimensions[HEADER_ROW].height = 48
-        formulas = self._formulas(table, letters) if self.plain else {}
+        formulas = self._formulas(table, letters) if self.formulas.written else {}
         for row in range(FIRST_ROW, last + 1):
             for column in columns:
                 cell = sheet[f"{letters[column.key]}{row}"]
@@ -154,7 +186,8 @@ class _Builder:
         """Return the formula of each computed column and of Status, with ROW for the row number."""
         cells = Cells(
             {key: name(f"${letter}{ROW}") for key, letter in letters.items()}
-            | {key: name(key) for key in self._named()}
+            | {key: name(key) for key in self._named()},
+            self.formulas.calls,
         )
         formulas: dict[str, str] = {}
         for key, tree in table.nodes.items():
@@ -255,19 +288,18 @@ def build(
     recipe: Recipe,
     path: Path,
     *,
-    formulas: str = "plain",
+    formulas: Formulas = FORMULAS["plain"],
     rows: int | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write the template workbook of a recipe, whole or not at all.
 
-    formulas: "plain" puts standard spreadsheet formulas into the computed cells; "none" leaves them
-    for `fill`
+    formulas: what goes into the computed cells, one of FORMULAS
     rows: rows to prepare in each sheet, where not as many as the recipe says
     overwrite: whether `path` may exist
     Raises LogbookError where `path` cannot be written.
     """
-    builder = _Builder(recipe, formulas == "plain", rows, datetime.now(UTC))
+    builder = _Builder(recipe, formulas, rows, datetime.now(UTC))
     packed = BytesIO()
     builder.built().workbook.save(packed)
     write_whole(path, _without_empty_types(packed), overwrite=overwrite)

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Annotated
 import typer
 
 from cellfuncs.errors import CellError
+from workbooks.connect import connect_calc
 from workbooks.connect_excel import connect_excel
 from workbooks.functions import functions
 from workbooks.logbook import LogbookError
@@ -52,7 +53,10 @@ def template(
     ] = None,
     formulas: Annotated[
         str,
-        typer.Option(help="plain: standard spreadsheet formulas; none: cells left for `fill`."),
+        typer.Option(
+            help="plain: standard formulas; addin: calls of the connected functions, a file each "
+            "for Calc and Excel; none: cells left for `fill`."
+        ),
     ] = "plain",
     rows: Annotated[
         int | None, typer.Option(min=1, max=100_000, help="Rows to prepare in each sheet.")
@@ -61,20 +65,28 @@ def template(
 ) -> None:
     """Make a template workbook that computes in any spreadsheet program, nothing installed."""
     from workbooks import build
+    from workbooks.package import check_target
     from workbooks.recipe import built_in, load
 
     if recipe is None:
         for name in built_in():
             print(f"{name:16} {load(name).text.purpose}")
         return
-    if formulas not in ("plain", "none"):
-        raise typer.BadParameter(f"--formulas is {formulas!r}; it must be plain or none")
+    if formulas not in ("plain", "addin", "none"):
+        raise typer.BadParameter(f"--formulas is {formulas!r}; it must be plain, addin or none")
     if output is not None and output.suffix.lower() != ".xlsx":
         raise typer.BadParameter(f"{output}: a template is an .xlsx file")
     loaded = load(recipe)
     target = output or Path(f"{loaded.name}.xlsx")
-    build.build(loaded, target, formulas=formulas, rows=rows, overwrite=overwrite)
-    print(f"{target}: {loaded.text.title}")
+    kinds = {formulas: target}
+    if formulas == "addin":
+        kinds = {each: target.with_stem(f"{target.stem}-{each}") for each in ("calc", "excel")}
+        for each in kinds.values():
+            check_target(each, overwrite=overwrite)
+    for kind, path in kinds.items():
+        made = build.FORMULAS[kind]
+        build.build(loaded, path, formulas=made, rows=rows, overwrite=overwrite)
+        print(f"{path}: {loaded.text.title}" + (f". {made.needs}" if made.needs else ""))
 
 
 @app.command()
@@ -122,6 +134,7 @@ def fill(
 app.command()(functions)
 connect = typer.Typer(no_args_is_help=True, help="Connect the functions to a spreadsheet program.")
 app.add_typer(connect, name="connect")
+connect.command("calc")(connect_calc)
 connect.command("excel")(connect_excel)
 
 

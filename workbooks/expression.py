@@ -18,9 +18,12 @@ from cellfuncs.bridges.formula import SETTINGS_COSMOLOGY, Guarded, any_of, guard
 from cellfuncs.catalogue import CATALOGUE, Argument, Choice, CosmologySet, Function, Number
 from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, near_matches
 from cellfuncs.physics.expansion import Cosmology
-from cellfuncs.symbols import Expr, build, node
+from cellfuncs.symbols import Expr, build, name, node
 
 TEXT: Final = "text"
+
+COSMOLOGY_RANGE: Final = "cosmology_parameters"
+"""The range of a workbook that holds the cosmology in use, two columns: parameter and value"""
 
 
 class ExpressionError(ValueError):
@@ -52,9 +55,14 @@ class Columns:
 
 @dataclass(frozen=True)
 class Cells:
-    """What a formula finds in a row of a template: a symbol of the cell by key."""
+    """What a formula finds in a row of a template: a symbol of the cell by key.
+
+    `calls` None asks for plain formulas; a text asks for calls of the add-in's functions, with the
+    text before each name, as the program that is to compute the file spells them.
+    """
 
     symbols: Mapping[str, Expr]
+    calls: str | None = None
 
 
 class Node(ABC):
@@ -240,7 +248,38 @@ class Call(Node):
             for argument, part in zip(self.function.arguments, self.arguments, strict=True)
         ]
 
+    def _as_call(self, cells: Cells) -> Guarded:
+        values: list[Expr | None] = []
+        inner: list[Guarded] = []
+        for argument, part in zip(self.function.arguments, self.arguments, strict=True):
+            if part is None:
+                # the workbook's own cosmology where it has one, else the function's default
+                own = isinstance(argument, CosmologySet) and "hubble_constant" in cells.symbols
+                values.append(name(COSMOLOGY_RANGE) if own else None)
+                continue
+            piece = part.of_cells(cells)
+            if isinstance(part, Key):
+                piece = Guarded(piece.value, (piece.value,))
+            if argument.optional and piece.blank:
+                piece = _with_default(piece, node(argument.default))
+            inner.append(piece)
+            values.append(piece.value)
+        while values and values[-1] is None:
+            values.pop()
+        given = [
+            node(argument.default) if value is None else value
+            for argument, value in zip(self.function.arguments, values, strict=False)
+        ]
+        return Guarded(
+            Expr(f"{cells.calls}{self.function.name}", *given),
+            _once(sum((piece.blank for piece in inner), ())),
+            _once(sum((piece.typed for piece in inner), ())),
+            sum((piece.allowed for piece in inner), ()),
+        )
+
     def of_cells(self, cells: Cells) -> Guarded:
+        if cells.calls is not None:
+            return self._as_call(cells)
         given: dict[str, Any] = {}
         inner: list[Guarded] = []
         for argument, part in zip(self.function.arguments, self.arguments, strict=True):

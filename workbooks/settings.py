@@ -5,6 +5,7 @@ from typing import Final
 
 from cellfuncs.bridges.formula import HIDDEN_TABLES, derived_settings
 from cellfuncs.physics.expansion import PARAMETERS
+from workbooks.expression import COSMOLOGY_RANGE
 
 OWN: Final = "own"
 """The choice in place of a published set's name that puts the user's own values in use"""
@@ -59,7 +60,8 @@ def reserved_names() -> set[str]:
     own = {cell.own_cell for cell in COSMOLOGY_CELLS} | {cell.cell for cell in COSMOLOGY_CELLS}
     published = {f"published_{cell.cell}" for cell in COSMOLOGY_CELLS}
     return (
-        {SET_CELL, "published_set", "line_name", "omega_dark_energy_own", *PROVENANCE_CELLS}
+        {SET_CELL, "published_set", "line_name", "omega_dark_energy_own", COSMOLOGY_RANGE}
+        | set(PROVENANCE_CELLS)
         | own
         | published
         | set(HIDDEN_TABLES)

@@ -16,7 +16,7 @@ from cellfuncs.families.workbook import provenance
 from cellfuncs.physics import lines, refraction
 from cellfuncs.physics.expansion import PARAMETERS, PUBLISHED, published
 from cellfuncs.symbols import Expr, name, node
-from workbooks.expression import Call
+from workbooks.expression import COSMOLOGY_RANGE, Call
 from workbooks.recipe import Column, Recipe, Setting, Table, lines_wanted
 from workbooks.settings import COSMOLOGY_CELLS, OWN, SET_CELL, CosmologyCell
 from workbooks.sheets import (
@@ -163,7 +163,7 @@ def line_sheet(book: Book) -> None:
     book.name("line_name", sheet, f"$A${FIRST_ROW}:$A${FIRST_ROW + len(table) - 1}")
 
 
-def how_to_sheet(book: Book, recipe: Recipe) -> None:
+def how_to_sheet(book: Book, recipe: Recipe, needs: str) -> None:
     sheet = book.sheet("How to use")
     sheet.column_dimensions["A"].width = 26
     sheet.column_dimensions["B"].width = 18
@@ -171,7 +171,7 @@ def how_to_sheet(book: Book, recipe: Recipe) -> None:
     put(sheet, "A1", recipe.text.title, TITLE)
     put(sheet, "A2", recipe.text.purpose, PLAIN)
     row = 4
-    for number, step in enumerate(recipe.text.steps, 1):
+    for number, step in enumerate([*([needs] if needs else []), *recipe.text.steps], 1):
         put(sheet, f"A{row}", f"Step {number}", BOLD).alignment = WRAPPED
         put(sheet, f"B{row}", step, PLAIN).alignment = WRAPPED
         sheet.merge_cells(f"B{row}:C{row}")
@@ -253,11 +253,23 @@ def hidden_tables(book: Book, recipe: Recipe) -> None:
                 place += 1
                 _column_of(book, sheet, place, key, ("=" + text_of(formula),))
         place += 1
+        _cosmology_range(book, sheet, place)
+        place += 2
         typed = name("omega_dark_energy_typed")
         # what was typed counts only while the user's own set is in use
         own = Expr("IF", Expr("same", name(SET_CELL), node(OWN)), typed, node(""))
         blank = Expr("IF", Expr("blank", typed), node(""), own)
         _column_of(book, sheet, place, "omega_dark_energy_own", ("=" + text_of(blank),))
+
+
+def _cosmology_range(book: Book, sheet: Worksheet, place: int) -> None:
+    """The cosmology in use as an add-in's function takes it; a mass a kind of neutrino"""
+    for row, cell in enumerate(COSMOLOGY_CELLS, 2):
+        used = "omega_dark_energy_own" if cell.parameter == "Ode0" else cell.cell
+        sheet.cell(row, place, cell.parameter)
+        sheet.cell(row, place + 1, f"={used}")
+    first, last = get_column_letter(place), get_column_letter(place + 1)
+    book.name(COSMOLOGY_RANGE, sheet, f"${first}$2:${last}${len(COSMOLOGY_CELLS) + 1}")
 
 
 def _column_of(book: Book, sheet: Worksheet, place: int, key: str, values: Sequence[Any]) -> None:

@@ -119,6 +119,8 @@ def _answer_with_care(made: Function, given: Sequence[Any]) -> Result | list[lis
     if not ranges:
         return flat[0]
     width = shape[1]
+    if width == 1:
+        return [[each] for each in flat]
     return [flat[start : start + width] for start in range(0, len(flat), width)]
 
 
@@ -198,12 +200,12 @@ def _column(
             ready[position] = argument.default
     results, _ = made.column(ready)
     flat: list[Any] = results.tolist()
+    without = results == np.array(None) if made.gives_text else np.isnan(results)
     why = _Why(made, values, columns)
-    for index, result in enumerate(flat):
-        if result is None or result != result:
-            flat[index] = passed_on.get(index) or why.at(index)
-        elif index in passed_on:
-            flat[index] = passed_on[index]
+    for index in np.flatnonzero(without).tolist():
+        flat[index] = why.at(index)
+    for index, error in passed_on.items():
+        flat[index] = error
     return flat
 
 

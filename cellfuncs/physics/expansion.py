@@ -659,9 +659,13 @@ def cosmology_from(given: Any) -> Cosmology:
             raise InputError(
                 f"cosmology: {key!r} is not a parameter ({near_matches(key, PARAMETERS)})"
             )
-        if known in own:
+        if known in own and known != "m_nu":
             raise InputError(f"cosmology: {known} is given twice")
-        if not _is_blank(value):
+        if known in own:
+            # a range has a row for the mass of each kind of neutrino
+            masses = own[known] if isinstance(own[known], tuple) else (own[known],)
+            own[known] = (*masses, _plain(value))
+        elif not _is_blank(value):
             own[known] = _plain(value)
     return _own(tuple(sorted(own.items())), "own")
 
