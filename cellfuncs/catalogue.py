@@ -220,12 +220,11 @@ class CosmologySet(Argument):
         return cosmology_from(value)
 
     def is_column(self, value: Any) -> bool:
-        # a column of names is told from a two-column range by what its first element is
+        # a column of names has no rows within; a two-column range has
         return (
             isinstance(value, (np.ndarray, list, tuple))
             and len(value) > 0
-            and (value[0] is None or isinstance(value[0], str))
-            and any(isinstance(each, str) for each in value)
+            and not isinstance(value[0], (np.ndarray, list, tuple))
         )
 
 
@@ -437,7 +436,8 @@ class Function:
         if any(each is None for each in ready) or 0 in shape:
             return result, wrong
         if not words:
-            return result, wrong or self._compute(result, ..., ready)
+            problem = self._compute(result, ..., ready)
+            return result, wrong or problem
         for rows, parsed, problem in self._grouped(words, shape):
             wrong = wrong or problem
             if parsed is None:
@@ -448,7 +448,8 @@ class Function:
                 else each
                 for each in (parsed.get(position, each) for position, each in enumerate(ready))
             ]
-            wrong = self._compute(result.reshape(-1), rows, part) or wrong
+            problem = self._compute(result.reshape(-1), rows, part)
+            wrong = wrong or problem
         return result, wrong
 
     def _empty_column(self, shape: tuple[int, ...]) -> Any:
