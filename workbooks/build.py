@@ -225,21 +225,26 @@ class _Builder:
             rule = DataValidation("list", formula1="line_name")
             rule.showErrorMessage = False
         elif column.is_number:
-            rule = DataValidation("custom", formula1=f"=ISNUMBER({first})")
-            rule.error = f"{column.label} must be a number{_of_unit(column)}."
+            limits = [
+                inside(problem, name(first))
+                for problem in table.problems
+                if problem.column is column and problem.kind == "limit"
+            ]
+            allowed = text_of(all_of([Expr("ISNUMBER", name(first)), *limits]))
+            rule = DataValidation("custom", formula1=allowed)
+            rule.error = (
+                f"{column.label} must be a number{_of_unit(column)}{_limits(table, column)}."
+            )
         rule.allow_blank = True
         if rule.error:
             rule.showErrorMessage = True
+            rule.error = rule.error[:225]
             rule.errorStyle = "warning"
             rule.errorTitle = column.label[:32]
         rule.showInputMessage = True
         rule.promptTitle = column.header[:32]
-        limits = "; ".join(
-            problem.words.removeprefix(column.label + " ")
-            for problem in table.problems
-            if problem.column is column and problem.kind == "limit"
-        )
-        rule.prompt = f"{column.note}{' It ' + limits + '.' if limits else ''}"[:255] or None
+        within = _limits(table, column)
+        rule.prompt = f"{column.note}{' It must be' + within + '.' if within else ''}"[:255] or None
         rule.add(f"{first}:{first.rstrip('0123456789')}{last}")
         sheet.add_data_validation(rule)
 
@@ -248,6 +253,16 @@ class _Builder:
         if self.recipe.text.cosmology:
             for cell in COSMOLOGY_CELLS:
                 yield cell.cell
+
+
+def inside(problem: Problem, cell: Expr) -> Expr:
+    """Return the condition that holds where a number keeps a limit."""
+    limit = problem.limit
+    if not isinstance(limit, str):
+        return Expr(problem.comparison, cell, node(limit))
+    bound = name(limit)
+    kept = Expr(problem.comparison, cell, bound * problem.factor)
+    return Expr("OR", Expr("blank", bound), kept)
 
 
 def broken(problem: Problem, cells: Cells) -> Expr:
@@ -261,18 +276,23 @@ def broken(problem: Problem, cells: Cells) -> Expr:
     if problem.kind == "not a number":
         wrong = Expr("NOT", Expr("ISNUMBER", cell))
     elif problem.kind == "limit":
-        limit = problem.limit
-        bound = name(limit) if isinstance(limit, str) else node(limit)
-        inside = Expr(problem.comparison, cell, bound * problem.factor)
-        if isinstance(limit, str):
-            inside = Expr("OR", Expr("blank", bound), inside)
-        wrong = Expr("NOT", inside)
+        wrong = Expr("NOT", inside(problem, cell))
     elif problem.kind == "not a choice":
         choices = [Expr("same", cell, node(choice)) for choice in problem.column.choices]
         wrong = Expr("NOT", any_of(choices))
     else:
         wrong = Expr("ISERROR", Expr("lookup", cell, name("line_key"), name("line_vacuum")))
     return Expr("AND", Expr("NOT", blank), wrong)
+
+
+def _limits(table: Table, column: Column) -> str:
+    """Return what a column's numbers are held to, in words with a blank before"""
+    limits = [
+        problem.words.removeprefix(f"{column.label} must be")
+        for problem in table.problems
+        if problem.column is column and problem.kind == "limit"
+    ]
+    return " and".join(limits)
 
 
 def _of_unit(column: Column) -> str:
@@ -288,18 +308,18 @@ def build(
     recipe: Recipe,
     path: Path,
     *,
-    formulas: Formulas = FORMULAS["plain"],
+    formulas: str = "plain",
     rows: int | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write the template workbook of a recipe, whole or not at all.
 
-    formulas: what goes into the computed cells, one of FORMULAS
+    formulas: what goes into the computed cells, by its name in FORMULAS
     rows: rows to prepare in each sheet, where not as many as the recipe says
     overwrite: whether `path` may exist
     Raises LogbookError where `path` cannot be written.
     """
-    builder = _Builder(recipe, formulas, rows, datetime.now(UTC))
+    builder = _Builder(recipe, FORMULAS[formulas], rows, datetime.now(UTC))
     packed = BytesIO()
     builder.built().workbook.save(packed)
     write_whole(path, _without_empty_types(packed), overwrite=overwrite)

@@ -84,9 +84,9 @@ def template(
         for each in kinds.values():
             check_target(each, overwrite=overwrite)
     for kind, path in kinds.items():
-        made = build.FORMULAS[kind]
-        build.build(loaded, path, formulas=made, rows=rows, overwrite=overwrite)
-        print(f"{path}: {loaded.text.title}" + (f". {made.needs}" if made.needs else ""))
+        build.build(loaded, path, formulas=kind, rows=rows, overwrite=overwrite)
+        needs = build.FORMULAS[kind].needs
+        print(f"{path}: {loaded.text.title}" + (f". {needs}" if needs else ""))
 
 
 @app.command()

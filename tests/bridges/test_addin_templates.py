@@ -15,7 +15,7 @@ from cellfuncs.bridges.calc.extension import Extension, build
 from cellfuncs.catalogue import CATALOGUE
 from cellfuncs.families.distance import distance_luminosity, magnitude_absolute
 from cellfuncs.families.spectrum import redshift_from_line
-from workbooks.build import FIRST_ROW, FORMULAS
+from workbooks.build import FIRST_ROW
 from workbooks.build import build as build_template
 from workbooks.recipe import load
 
@@ -47,7 +47,7 @@ def computed(
 ) -> list[dict[str, Any]]:
     """Give what Calc shows in the rows of a template, by header."""
     path = folder / f"{recipe}.xlsx"
-    build_template(load(recipe), path, formulas=FORMULAS["calc"], rows=len(rows) + 1)
+    build_template(load(recipe), path, formulas="calc", rows=len(rows) + 1)
     book = openpyxl.load_workbook(path)
     sheet = book[load(recipe).tables[0].sheet.name]
     for row, values in enumerate(rows, FIRST_ROW):
@@ -143,7 +143,7 @@ def test_line_log_calls_give_what_python_gives(office: Office, tmp_path: Path) -
 def test_excel_gets_the_functions_by_their_names(tmp_path: Path, recipe: str) -> None:
     """Excel calls a user's function by its bare name; no other program's prefix may be left."""
     path = tmp_path / "excel.xlsx"
-    build_template(load(recipe), path, formulas=FORMULAS["excel"], rows=1)
+    build_template(load(recipe), path, formulas="excel", rows=1)
     sheet = openpyxl.load_workbook(path)[load(recipe).tables[0].sheet.name]
     formulas = [cell.value for cell in sheet[FIRST_ROW] if cell.value]
     assert not [text for text in formulas if "ORG." in text]

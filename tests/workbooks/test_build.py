@@ -573,6 +573,31 @@ def test_the_sheets_are_ready_to_type_in(templates: dict[str, Path], recipe_name
     }
 
 
+@every_engine
+def test_a_range_check_lets_pass_what_status_calls_ok(
+    templates: dict[str, Path], tmp_path: Path, engine: str
+) -> None:
+    """The instrument of the template reaches from 3000 to 25000 Angstrom."""
+    book = openpyxl.load_workbook(templates["line-log"])
+    sheet = book["Lines"]
+    (rule,) = (
+        each for each in sheet.data_validations.dataValidation if str(each.sqref).startswith("C5")
+    )
+    assert rule.showErrorMessage
+    assert len(rule.formula1) <= 255
+    values = {-5.0: False, 0.0: False, 2999.0: False, 3000.0: True, 25000.0: True, 25001.0: False}
+    tried = book.create_sheet("Tried")
+    for row, value in enumerate((*values, "6563 A"), 1):
+        tried.cell(row, 1, value)
+        tried.cell(row, 2, "=" + rule.formula1.replace("C5", f"A{row}"))
+    path = tmp_path / "tried.xlsx"
+    book.save(path)
+    found = recalculated(path, engine)["Tried"]
+    shown = [bool(found[f"B{row}"]) for row in range(1, len(values) + 1)]
+    assert shown == list(values.values())
+    assert not found[f"B{len(values) + 1}"] or isinstance(found[f"B{len(values) + 1}"], ErrorCell)
+
+
 @every_recipe
 def test_settings_are_named_cells(templates: dict[str, Path], recipe_name: str) -> None:
     book = openpyxl.load_workbook(templates[recipe_name])
