@@ -283,29 +283,21 @@ def derived_settings() -> dict[str, Expr]:
     """
     cells = SETTINGS_COSMOLOGY
     own = name("omega_dark_energy_own")
-    made = expansion.derived(
-        "settings",
-        cells.h0,
-        cells.om0,
-        None,
-        cells.w0,
-        cells.wa,
-        cells.tcmb0,
-        cells.neff,
-        cells.m_nu,
+    flat, curved = (
+        expansion.derived(
+            "settings",
+            cells.h0,
+            cells.om0,
+            dark_energy,
+            cells.w0,
+            cells.wa,
+            cells.tcmb0,
+            cells.neff,
+            cells.m_nu,
+        )
+        for dark_energy in (None, own)
     )
-    flat = Expr("blank", own)
-    curved = expansion.derived(
-        "settings",
-        cells.h0,
-        cells.om0,
-        own,
-        cells.w0,
-        cells.wa,
-        cells.tcmb0,
-        cells.neff,
-        cells.m_nu,
-    )
+    is_flat = Expr("blank", own)
     sums = {
         f"{integral}_{how}": sum_
         for integral, both in cells.sums_compared().items()
@@ -317,14 +309,14 @@ def derived_settings() -> dict[str, Expr]:
         + abs(name("age_in_one_sum") / (name("time_in_sums") + name("age_in_sums")) - 1)
     )
     return {
-        "omega_photon": made.ogamma0,
+        "omega_photon": flat.ogamma0,
         **{
             f"neutrino_ratio_{kind}": node(ratio)
-            for kind, ratio in zip(_KINDS, made.neutrino_ratios, strict=True)
+            for kind, ratio in zip(_KINDS, flat.neutrino_ratios, strict=True)
         },
-        "omega_neutrino": made.onu0,
-        "omega_dark_energy": Expr("IF", flat, made.ode0, own),
-        "omega_curvature": Expr("IF", flat, node(0.0), curved.ok0),
+        "omega_neutrino": flat.onu0,
+        "omega_dark_energy": Expr("IF", is_flat, flat.ode0, own),
+        "omega_curvature": Expr("IF", is_flat, node(0.0), curved.ok0),
         **sums,
         "expansion_error": error,
         "expansion_holds": Expr(
