@@ -141,11 +141,11 @@ class _Builder:
                     cell.fill = fill_of(WASH)
                     cell.value = formulas.get(column.key, "").replace(ROW, str(row)) or None
                 if not column.is_number:
-                    cell.alignment = Alignment(indent=1)
+                    cell.alignment = Alignment(horizontal="left", indent=1)
                     cell.number_format = "@" if column.kind == "text" else "General"
             cell = sheet[f"{status}{row}"]
             cell.border, cell.font, cell.fill = BOX, PLAIN, fill_of(WASH)
-            cell.alignment = Alignment(indent=1)
+            cell.alignment = Alignment(horizontal="left", indent=1)
             cell.value = formulas.get(STATUS, "").replace(ROW, str(row)) or None
         for column in table.inputs:
             self._validate(sheet, column, f"{letters[column.key]}{FIRST_ROW}", last, table)

@@ -97,9 +97,10 @@ def _cosmology(book: Book, recipe: Recipe, sheet: Worksheet, row: int) -> None:
     row += 2
     put_heading(sheet, row, ("Follows from these", "In use", "Unit", "", "Note"))
     for key, words in _DERIVED.items():
+        shape = "General" if key == "expansion_holds" else "0.000000E+00"
         row += 1
         put(sheet, f"A{row}", words, PLAIN)
-        put_result(sheet, f"B{row}", "=" + text_of(derived[key]), "0.000000E+00")
+        put_result(sheet, f"B{row}", "=" + text_of(derived[key]), shape)
         book.name(key, sheet, f"$B${row}")
 
 
@@ -156,7 +157,7 @@ def line_sheet(book: Book) -> None:
             if place in (3, 4):
                 cell.number_format = "0.000"
             else:
-                cell.alignment = Alignment(indent=1)
+                cell.alignment = Alignment(horizontal="left", indent=1)
     for letter, width in zip("ABCDEF", (20, 12, 20, 18, 60, 60), strict=True):
         sheet.column_dimensions[letter].width = width
     sheet.freeze_panes = f"B{FIRST_ROW}"
