@@ -322,8 +322,7 @@ class Function:
             else:
                 if self._required <= len(given) <= len(self.arguments):
                     try:
-                        with np.errstate(all="ignore"):
-                            result = self.body(*ready, *self._defaults[len(ready) :])
+                        result = self.body(*ready, *self._defaults[len(ready) :])
                         if type(result) is float and -inf < result < inf:
                             return result
                     except (CellError, ArithmeticError):
@@ -463,7 +462,7 @@ class Function:
                 computed = self.body(*ready)
             except InputError as error:
                 return error
-            except CellError:
+            except (CellError, ArithmeticError):
                 return None
         if not self.gives_text:
             finite = np.isfinite(computed)

@@ -2,13 +2,11 @@
 
 from typing import Any
 
-from numpy import log1p, sqrt
-
 from cellfuncs.catalogue import Number, function
 from cellfuncs.families.distance import COSMOLOGY, HOGG, REDSHIFT
 from cellfuncs.physics import expansion
 from cellfuncs.physics.fate import fate
-from cellfuncs.symbols import Real, within
+from cellfuncs.symbols import Real, log1p, sqrt, within
 
 PAST_OR_FUTURE = Number(
     meaning="redshift; below 0 is the future", above=-1.0, at_most=expansion.HIGHEST_REDSHIFT

@@ -3,8 +3,6 @@
 from math import pi
 from typing import Any
 
-from numpy import log1p, log10
-
 from cellfuncs.catalogue import Choice, CosmologySet, Number, function
 from cellfuncs.constants import (
     ARCSEC_PER_RADIAN,
@@ -13,7 +11,7 @@ from cellfuncs.constants import (
 from cellfuncs.families.velocity import DEFAULT_H0, HUBBLE, HUBBLE_CONSTANT
 from cellfuncs.physics import expansion
 from cellfuncs.physics.expansion import Cosmology
-from cellfuncs.symbols import Real, choose
+from cellfuncs.symbols import Real, choose, log1p, log10
 
 HOGG = "Hogg 1999, astro-ph/9905116"
 

@@ -2,13 +2,11 @@
 
 from typing import Any
 
-from numpy import sqrt
-
 from cellfuncs.catalogue import Choice, Number, function
 from cellfuncs.constants import LIGHT_SPEED
 from cellfuncs.physics import conventions
 from cellfuncs.physics.expansion import DEFAULT, published
-from cellfuncs.symbols import Real
+from cellfuncs.symbols import Real, sqrt
 
 GREISEN = "Greisen et al. 2006, A&A 446, 747 (FITS WCS Paper III), Table 3"
 EINSTEIN = "special relativity: Einstein 1905, Annalen der Physik 322, 891"

@@ -6,10 +6,8 @@ positive. Each convention reaches as far as z > -1 does.
 
 from typing import Any, Final
 
-from numpy import sqrt
-
 from cellfuncs.constants import LIGHT_SPEED
-from cellfuncs.symbols import Real, choose, within
+from cellfuncs.symbols import Real, choose, sqrt, within
 
 NAMES: Final = ("relativistic", "optical", "radio")
 

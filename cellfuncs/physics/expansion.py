@@ -12,12 +12,27 @@ from math import factorial, floor, inf, isfinite, log1p, pi
 from typing import Any, Final
 
 import numpy as np
-from numpy import cos, cosh, exp, log, sin, sinh, sqrt
+from numpy import cos, cosh
 from numpy.typing import NDArray
 
 from cellfuncs import constants
 from cellfuncs.errors import DomainError, InputError, MissingInput, near_matches
-from cellfuncs.symbols import Expr, Real, either, name, node, number_of, polynomial, total, within
+from cellfuncs.symbols import (
+    Expr,
+    Real,
+    either,
+    exp,
+    log,
+    name,
+    node,
+    number_of,
+    polynomial,
+    sin,
+    sinh,
+    sqrt,
+    total,
+    within,
+)
 
 Floats = NDArray[np.float64]
 
@@ -236,7 +251,10 @@ class Integral:
 
     def _solve(self, value: Real, left: Floats) -> Real:
         """Find the piece by its edges, then its t by Newton's method; the slope is the integrand"""
-        value = np.asarray(value, dtype=np.float64)
+        with np.errstate(all="ignore"):
+            return self._solved(np.asarray(value, dtype=np.float64), left)
+
+    def _solved(self, value: Floats, left: Floats) -> Real:
         _, growth, per_unit = self._pieces
         real = int(np.argmax(~np.isfinite(left))) if not np.isfinite(left).all() else len(left)
         if real == 0:
@@ -361,6 +379,8 @@ class Cosmology:
 
     def transverse(self, comoving: Real) -> Real:
         """Return the transverse comoving distance for a line-of-sight one, in Mpc (Hogg eq. 16)."""
+        if type(self.ok0) is float and self.ok0 == 0:
+            return comoving
 
         def open_space() -> Real:
             scale = self.hubble_distance / sqrt(self.ok0)
