@@ -104,6 +104,17 @@ class Number(Argument):
         unit = f" {self.unit}" if self.unit else ""
         return " and ".join(limits) + unit if limits else "a finite number"
 
+    def limits(self) -> Iterator[tuple[str, float]]:
+        """Yield comparison and limit of each limit that there is."""
+        for comparison, limit in (
+            (">", self.above),
+            (">=", self.at_least),
+            ("<", self.below),
+            ("<=", self.at_most),
+        ):
+            if isfinite(limit):
+                yield comparison, limit
+
     def parsed(self, value: Any) -> float:
         if type(value) is not float:
             value = self._as_float(value)

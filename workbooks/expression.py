@@ -7,7 +7,7 @@ fixed list of node types is taken; nothing is ever executed.
 
 import ast
 from abc import ABC, abstractmethod
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Any, Final
 
@@ -48,7 +48,7 @@ class Columns:
     Numbers are float64 with NaN, texts object arrays with None; `empty` marks the empty cells.
     """
 
-    values: Mapping[str, Any]
+    values: dict[str, Any]
     empty: Mapping[str, Any]
     cosmology: Cosmology
 
@@ -307,6 +307,14 @@ class Call(Node):
         for part in self.arguments:
             if part is not None:
                 yield from part.parts()
+
+
+def given_arguments(trees: Iterable[Node]) -> Iterator[tuple[Argument, Node | None]]:
+    """Yield every argument of every call in the formulas, with the part that is given for it."""
+    for tree in trees:
+        for part in tree.parts():
+            if isinstance(part, Call):
+                yield from zip(part.function.arguments, part.arguments, strict=True)
 
 
 def _with_default(piece: Guarded, default: Expr) -> Guarded:

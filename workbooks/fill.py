@@ -10,13 +10,13 @@ from typing import Any, Final
 import numpy as np
 
 from cellfuncs import units
-from cellfuncs.catalogue import is_empty, shown
+from cellfuncs.catalogue import CosmologySet, is_empty, shown
 from cellfuncs.errors import CellError, InputError, MissingInput
 from cellfuncs.families.workbook import provenance
 from cellfuncs.physics import lines
 from cellfuncs.physics.expansion import DEFAULT, Cosmology, cosmology_from
 from workbooks.build import ROW_OK, STATUS, UNEXPLAINED
-from workbooks.expression import Call, Columns, Row
+from workbooks.expression import Columns, Row, given_arguments
 from workbooks.logbook import (
     ErrorValue,
     Header,
@@ -322,6 +322,7 @@ class _Filler:
 
     def __post_init__(self) -> None:
         self.table, self.sheet, self.places = self.match.table, self.match.sheet, self.match.places
+        self.anchors = self.table.anchors
         self.report = SheetReport(self.sheet.name, self.table.sheet.name)
 
     def filled(self) -> SheetReport:
@@ -352,14 +353,9 @@ class _Filler:
 
     def _default_of(self, key: str) -> Any:
         """Return what a function takes where this input is left out, None if it must be there"""
-        for tree in self.table.nodes.values():
-            for part in tree.parts():
-                if isinstance(part, Call):
-                    for argument, given in zip(
-                        part.function.arguments, part.arguments, strict=True
-                    ):
-                        if argument.optional and plain_key(given) == key:
-                            return argument.default
+        for argument, given in given_arguments(self.table.nodes.values()):
+            if argument.optional and plain_key(given) == key:
+                return argument.default
         return None
 
     def _row_numbers(self) -> range:
@@ -370,7 +366,7 @@ class _Filler:
         return None if place is None else self.sheet.rows[row - 1][place.number - 1]
 
     def _in_use(self, row: int) -> bool:
-        return any(self._cell(row, key) is not None for key in self.table.anchors)
+        return any(self._cell(row, key) is not None for key in self.anchors)
 
     def _raw(self, column: Column, numbers: Sequence[int]) -> list[Any]:
         """Return the cells of an input in the recipe's unit; what is no number stays as it is."""
@@ -398,7 +394,7 @@ class _Filler:
                 values[column.key] = texts
         return Columns(values, empty, self.cosmology)
 
-    def _computed(self, key: str, columns: Columns, raw: Mapping[str, list[Any]]) -> list[Any]:
+    def _computed(self, key: str, columns: Columns, raw: dict[str, list[Any]]) -> list[Any]:
         """Return a value a row, or the CellError that says why there is none."""
         length = len(next(iter(raw.values()), []))
         tree = self.table.nodes[key]
@@ -410,12 +406,12 @@ class _Filler:
                 values[index] = self._reason(tree, row)
         # a column that builds on this one finds the numbers here and the reasons in `raw`
         is_number = self.table.columns[key].is_number
-        columns.values[key] = (  # type: ignore[index]
+        columns.values[key] = (
             np.array([np.nan if isinstance(v, CellError) else v for v in values], dtype=float)
             if is_number
             else np.array([None if isinstance(v, CellError) else v for v in values], dtype=object)
         )
-        raw[key] = values  # type: ignore[index]
+        raw[key] = values
         return list(values)
 
     def _reason(self, tree: Any, row: Mapping[str, Any]) -> Any:
@@ -436,10 +432,11 @@ class _Filler:
         for index, row in enumerate(numbers):
             problems = list(self._problems(index, raw))
             missing = any(problem.kind == "missing" for problem in problems)
+            ours = self._is_ours(row, trail_at)
             failed = False
             for key, place in targets.items():
                 value = results[key][index]
-                failed |= self._set(row, place, value, missing, self._is_ours(row, trail_at))
+                failed |= self._set(row, place, value, missing, ours)
             remarks = [self._remark(row, problem, raw, index) for problem in problems]
             failed = failed or missing
             if failed:
@@ -632,10 +629,8 @@ class _Filler:
 
     def _uses_cosmology(self) -> bool:
         return any(
-            isinstance(part, Call)
-            and any(argument.name == "cosmology" for argument in part.function.arguments)
-            for tree in self.table.nodes.values()
-            for part in tree.parts()
+            isinstance(argument, CosmologySet)
+            for argument, _ in given_arguments(self.table.nodes.values())
         )
 
 

@@ -17,7 +17,16 @@ from cellfuncs.errors import InputError, near_matches
 from cellfuncs.families.spectrum import LineName
 from cellfuncs.physics.expansion import PUBLISHED
 from cellfuncs.symbols import NotTraceable, name
-from workbooks.expression import TEXT, Call, Cells, ExpressionError, Key, Node, Parser, Scaled
+from workbooks.expression import (
+    TEXT,
+    Cells,
+    ExpressionError,
+    Key,
+    Node,
+    Parser,
+    Scaled,
+    given_arguments,
+)
 from workbooks.logbook import Header, parse_header
 from workbooks.settings import COSMOLOGY_CELLS, COSMOLOGY_KEYS, reserved_names
 
@@ -35,7 +44,6 @@ class Model(BaseModel):
 Finite = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Text = Annotated[str, Field(strict=True, pattern=r"^[^\x00-\x08\x0b\x0c\x0e-\x1f]*$")]
 Count = Annotated[int, Field(strict=True, ge=1, le=1_000_000)]
-Choices = Annotated[tuple[Text, ...], Field(max_length=100)]
 
 
 class Limited(Model):
@@ -177,10 +185,6 @@ class Recipe:
     @property
     def settings(self) -> dict[str, Setting]:
         return {setting.key: setting for setting in self.text.settings}
-
-    @property
-    def has_lines(self) -> bool:
-        return any(column.kind == "line" for table in self.tables for column in table.inputs)
 
 
 def built_in() -> list[str]:
@@ -574,12 +578,10 @@ def _required(sheet: Sheet, nodes: Mapping[str, Node]) -> Iterator[str]:
     optional: set[str] = set()
     needed: set[str] = set()
     for tree in nodes.values():
-        for part in tree.parts():
-            if isinstance(part, Call):
-                for argument, given in zip(part.function.arguments, part.arguments, strict=True):
-                    key = plain_key(given)
-                    if key is not None:
-                        (optional if argument.optional else needed).add(key)
+        for argument, given in given_arguments([tree]):
+            key = plain_key(given)
+            if key is not None:
+                (optional if argument.optional else needed).add(key)
         bare = set(_keys(tree)) - optional
         needed |= bare
     for column in sheet.columns:
@@ -610,21 +612,11 @@ def _tightest(
 
 def _domain(column: Column, nodes: Mapping[str, Node]) -> Iterator[tuple[str, float | str]]:
     """Yield the limits that the functions set to what they take straight from this column."""
-    for tree in nodes.values():
-        for part in tree.parts():
-            if not isinstance(part, Call):
-                continue
-            for argument, given in zip(part.function.arguments, part.arguments, strict=True):
-                if isinstance(argument, Number) and plain_key(given) == column.key:
-                    factor = given.factor if isinstance(given, Scaled) else 1.0
-                    for comparison, limit in (
-                        (">", argument.above),
-                        (">=", argument.at_least),
-                        ("<", argument.below),
-                        ("<=", argument.at_most),
-                    ):
-                        if abs(limit) != float("inf"):
-                            yield comparison, float(f"{limit / factor:.12g}")
+    for argument, given in given_arguments(nodes.values()):
+        if isinstance(argument, Number) and plain_key(given) == column.key:
+            factor = given.factor if isinstance(given, Scaled) else 1.0
+            for comparison, limit in argument.limits():
+                yield comparison, float(f"{limit / factor:.12g}")
 
 
 def lines_wanted(recipe: Recipe) -> bool:
@@ -632,8 +624,5 @@ def lines_wanted(recipe: Recipe) -> bool:
     return any(
         isinstance(argument, LineName)
         for table in recipe.tables
-        for tree in table.nodes.values()
-        for part in tree.parts()
-        if isinstance(part, Call)
-        for argument in part.function.arguments
+        for argument, _ in given_arguments(table.nodes.values())
     )

@@ -6,7 +6,7 @@ hidden table. Inside SUMPRODUCT only operators act on a range, because not every
 a function of a range element by element there: eˣ is EXP(1)^x, √x is x^0.5.
 """
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
@@ -208,18 +208,6 @@ def any_of(conditions: Sequence[Expr]) -> Expr:
     return conditions[0] if len(conditions) == 1 else Expr("OR", *conditions)
 
 
-def limits(argument: Number, value: Expr) -> Iterator[Expr]:
-    """Yield the conditions of a number's domain."""
-    for operation, limit in (
-        (">", argument.above),
-        (">=", argument.at_least),
-        ("<", argument.below),
-        ("<=", argument.at_most),
-    ):
-        if abs(limit) != float("inf"):
-            yield Expr(operation, value, node(limit))
-
-
 def guarded(made: Function, given: Mapping[str, Any]) -> Guarded:
     """Return a function of cells as an expression with its guards.
 
@@ -273,7 +261,9 @@ def _guard(argument: Argument, value: Expr, typed: list[Expr], allowed: list[Exp
         # what is computed inside has guards of its own
         if value.operation == "name" or (value.operation == "IF" and argument.optional):
             typed.append(Expr("ISNUMBER", value))
-        allowed.extend(limits(argument, value))
+        allowed.extend(
+            Expr(comparison, value, node(limit)) for comparison, limit in argument.limits()
+        )
 
 
 def derived_settings() -> dict[str, Expr]:
