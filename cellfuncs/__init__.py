@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 from cellfuncs.catalogue import CATALOGUE, Function
 from cellfuncs.errors import CellError, DomainError, InputError, MissingInput
-from cellfuncs.families import age, distance, spectrum, velocity, workbook
+from cellfuncs.families import age, distance, sample, sky, spectrum, velocity, workbook
 from cellfuncs.version import __version__
 
 __all__ = [
@@ -21,6 +21,8 @@ __all__ = [
     "__version__",
     "age",
     "distance",
+    "sample",
+    "sky",
     "spectrum",
     "velocity",
     "workbook",

@@ -69,6 +69,10 @@ class Argument(ABC):
         """Tell whether the value holds one element a row rather than one for all."""
         return isinstance(value, (np.ndarray, list, tuple, range)) and np.ndim(_as_array(value)) > 0
 
+    def symbol(self, value: Expr) -> Any:
+        """Return what stands for the parsed value where a cell holds the argument."""
+        return value
+
     def default_or(self, value: Any) -> Any:
         """Return `value`, or the default where it is None."""
         return self.default if value is None and self.optional else value
@@ -79,14 +83,45 @@ class Argument(ABC):
 
 
 @dataclass(frozen=True, kw_only=True)
-class Number(Argument):
+class Numeric(Argument):
+    """An argument that the formula takes as a float, and its column as an array of floats."""
+
+    unit: str = ""
+
+    def column(self, value: Any) -> tuple[Any, CellError | None]:
+        """Return float64 with NaN where nothing can be computed, and the first InputError met."""
+        array = _as_array(value)
+        if array.dtype.kind in "fiu":
+            with np.errstate(all="ignore"):
+                return self._of_numbers(array.astype(np.float64)), None
+        wrong: CellError | None = None
+        numbers = np.full(array.shape, np.nan)
+        flat = numbers.reshape(-1)
+        for index, each in enumerate(array.reshape(-1).tolist()):
+            try:
+                flat[index] = self.parsed(self._filled(each))
+            except InputError as error:
+                wrong = wrong or error
+            except CellError:
+                pass
+        return numbers, wrong
+
+    @abstractmethod
+    def _of_numbers(self, numbers: Any) -> Any:
+        """Return an array as the formula takes it, NaN where a number is not allowed."""
+
+    def _filled(self, value: Any) -> Any:
+        return self.default if self.optional and left_out(value) else value
+
+
+@dataclass(frozen=True, kw_only=True)
+class Number(Numeric):
     """A number with a unit and limits.
 
     `unit` "" is a pure number. `like` names a group whose members share one unit, whichever it is:
     `unit` is then only its kind, shown in the help.
     """
 
-    unit: str = ""
     like: str = ""
     above: float = -inf
     at_least: float = -inf
@@ -140,29 +175,10 @@ class Number(Argument):
         except (TypeError, ValueError, ArithmeticError):
             raise InputError(f"{self.name} is {shown(value)}, not a number") from None
 
-    def column(self, value: Any) -> tuple[Any, CellError | None]:
-        """Return float64 with NaN where nothing can be computed, and the first InputError met."""
-        array = _as_array(value)
-        wrong: CellError | None = None
-        if array.dtype.kind in "fiu":
-            with np.errstate(all="ignore"):
-                numbers = array.astype(np.float64)
-        else:
-            numbers = np.full(array.shape, np.nan)
-            flat = numbers.reshape(-1)
-            for index, each in enumerate(array.reshape(-1).tolist()):
-                try:
-                    flat[index] = self.parsed(self._filled(each))
-                except InputError as error:
-                    wrong = wrong or error
-                except CellError:
-                    pass
-        with np.errstate(invalid="ignore"):
-            low, high = self.open_interval
-            good = (numbers > low) & (numbers < high)
-        if not good.all():
-            numbers = np.where(good, numbers, np.nan)
-        return numbers, wrong
+    def _of_numbers(self, numbers: Any) -> Any:
+        low, high = self.open_interval
+        good = (numbers > low) & (numbers < high)
+        return numbers if good.all() else np.where(good, numbers, np.nan)
 
     @property
     def open_interval(self) -> tuple[float, float]:
@@ -171,9 +187,6 @@ class Number(Argument):
             max(self.above, nextafter(self.at_least, -inf)),
             min(self.below, nextafter(self.at_most, inf)),
         )
-
-    def _filled(self, value: Any) -> Any:
-        return self.default if self.optional and left_out(value) else value
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -218,6 +231,31 @@ class Choice(Word):
 
 
 @dataclass(frozen=True, kw_only=True)
+class Truth(Argument):
+    """Yes or no."""
+
+    @property
+    def allowed(self) -> str:
+        return "TRUE or FALSE"
+
+    def parsed(self, value: Any) -> bool:
+        if isinstance(value, (bool, np.bool_)):
+            return bool(value)
+        if is_empty(value):
+            raise MissingInput(f"{self.name} is empty")
+        # not every spreadsheet tells a logical value from 1 and 0
+        if isinstance(value, (int, float, np.number)) and value in (0, 1):
+            return bool(value)
+        if isinstance(value, str) and value.strip().casefold() in ("true", "false"):
+            return value.strip().casefold() == "true"
+        raise InputError(f"{self.name} is {shown(value)}; it must be {self.allowed}")
+
+    @property
+    def default_text(self) -> str:
+        return str(self.default).upper()
+
+
+@dataclass(frozen=True, kw_only=True)
 class CosmologySet(Argument):
     """A published set's name, or a mapping or two-column range of parameters."""
 
@@ -235,7 +273,7 @@ class CosmologySet(Argument):
         return (
             isinstance(value, (np.ndarray, list, tuple))
             and len(value) > 0
-            and not isinstance(value[0], (np.ndarray, list, tuple))
+            and (value[0] is np.ma.masked or not isinstance(value[0], (np.ndarray, list, tuple)))
         )
 
 
@@ -261,11 +299,24 @@ def _unmasked(value: Any) -> Any:
     return value if value.ndim else value[()]
 
 
+def _without_masks(value: Any) -> Any:
+    """Return a list with None in place of what is masked, however deep"""
+    if not any(each is np.ma.masked or isinstance(each, (list, tuple)) for each in value):
+        return value
+    return [
+        None
+        if each is np.ma.masked
+        else _without_masks(each)
+        if isinstance(each, (list, tuple))
+        else each
+        for each in value
+    ]
+
+
 def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
     if isinstance(value, np.ndarray):
         return value
-    if any(each is np.ma.masked for each in value):
-        value = [None if each is np.ma.masked else each for each in value]
+    value = _without_masks(value)
     try:
         array = np.asarray(value)
     except (ValueError, OverflowError, TypeError):
@@ -279,7 +330,7 @@ def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
     return array
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Function:
     """A function of the catalogue; call it with floats or with columns."""
 
@@ -295,6 +346,8 @@ class Function:
     body: Callable[..., Any]
     variadic: bool = False
     examples: tuple[str, ...] = ()
+    caution: str = ""
+    """What must be said wherever the function is offered"""
     _defaults: tuple[Any, ...] = field(init=False, repr=False)
     _limits: tuple[tuple[float, float], ...] = field(init=False, repr=False)
     _required: int = field(init=False, repr=False)
@@ -319,7 +372,10 @@ class Function:
 
     @property
     def gives_text(self) -> bool:
-        return self.unit == "text"
+        """Whether a result may be a text: always, or where an argument asks for a part that is."""
+        return self.unit == "text" or any(
+            "text" in getattr(argument, "units", {}).values() for argument in self.arguments
+        )
 
     def __call__(self, *given: Any, **named: Any) -> Any:
         # a cell is a call: floats inside their limits go straight to the formula, and whatever is
@@ -389,7 +445,7 @@ class Function:
             raise type(error)(f"{self.name}: {error}") from None
         except (OverflowError, ZeroDivisionError, FloatingPointError):
             result = inf
-        if self.unit == "text":
+        if self.unit == "text" or isinstance(result, str):
             return result
         result = float(result)
         if -inf < result < inf:
@@ -427,7 +483,7 @@ class Function:
                     ready.append(None)
                 except CellError:
                     ready.append(None)
-            elif isinstance(argument, Number):
+            elif isinstance(argument, Numeric):
                 numbers, problem = argument.column(value)
                 wrong = wrong or problem
                 shapes.append(numbers.shape)
@@ -534,10 +590,12 @@ class Function:
         """Return what the function computes as an expression of the symbols among its arguments."""
         values = []
         for argument, value in zip(self.arguments, self.bound(given, named), strict=True):
-            if not isinstance(value, (Expr, Cosmology)):
+            if isinstance(value, Expr):
+                value = argument.symbol(value)
+            elif not isinstance(value, Cosmology):
                 value = argument.parsed(value)
             # a number beside a symbolic cosmology must not ask for a table of numbers
-            values.append(node(value) if isinstance(argument, Number) else value)
+            values.append(node(value) if isinstance(argument, Numeric) else value)
         return node(self.body(*values))
 
     @property
@@ -573,6 +631,7 @@ class function:  # noqa: N801 - it reads as a decorator
     source: the published source of the formula
     traceable: whether the formula can be written with standard spreadsheet functions
     examples: calls as they stand in a cell, for the help
+    caution: what must be said wherever the function is offered
     arguments: an Argument for each of the definition's own; defaults are read off the definition
     """
 
@@ -584,6 +643,7 @@ class function:  # noqa: N801 - it reads as a decorator
         traceable: bool = True,
         variadic: bool = False,
         examples: tuple[str, ...] = (),
+        caution: str = "",
         **arguments: Argument,
     ) -> None:
         self.unit = unit
@@ -591,6 +651,7 @@ class function:  # noqa: N801 - it reads as a decorator
         self.traceable = traceable
         self.variadic = variadic
         self.examples = examples
+        self.caution = caution
         self.arguments = arguments
 
     def __call__(self, body: Callable[..., Any]) -> Function:
@@ -614,6 +675,7 @@ class function:  # noqa: N801 - it reads as a decorator
             body=body,
             variadic=self.variadic,
             examples=self.examples,
+            caution=self.caution,
         )
         CATALOGUE[made.name] = made
         return made
@@ -632,16 +694,34 @@ def result_phrase(made: Function) -> str:
     """Return what comes back, in words."""
     if made.unit in ("", "text"):
         return "text" if made.unit else "a pure number"
+    for argument in made.arguments:
+        if made.unit == f"as {argument.name}" and getattr(argument, "units", None):
+            return _parts_phrase(argument.units)  # type: ignore[attr-defined]
     if made.unit.startswith("as "):
         return f"a number in the unit of {made.unit[3:]}"
     return f"a number in {made.unit}"
 
 
+def _parts_phrase(units: Mapping[str, str]) -> str:
+    alike: dict[str, list[str]] = {}
+    for part, unit in units.items():
+        alike.setdefault(unit, []).append(part)
+    words = []
+    for unit, parts in alike.items():
+        if unit == "text":
+            kind = "as text"
+        elif unit.startswith("as "):
+            kind = f"in the unit of {unit[3:]}"
+        else:
+            kind = f"in {unit}" if unit else "as a pure number"
+        words.append(f"{' and '.join(parts)} {kind}")
+    return f"the part asked for: {', '.join(words)}"
+
+
 def docstring(made: Function) -> str:
     """Return the public docstring, made from the catalogue's entry."""
     lines = [made.summary, ""]
-    if made.notes:
-        lines += [made.notes, ""]
+    lines += [text + "\n" for text in (made.notes, made.caution) if text]
     lines.append("Arguments: floats, or arrays that broadcast to one shape.")
     for argument in made.arguments:
         unit = getattr(argument, "unit", "")

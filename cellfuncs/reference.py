@@ -13,6 +13,7 @@ from pathlib import Path
 from textwrap import fill
 from typing import Any, Final
 
+from cellfuncs.arguments import FunctionName, Part, WholeRange
 from cellfuncs.catalogue import (
     CATALOGUE,
     Argument,
@@ -20,11 +21,13 @@ from cellfuncs.catalogue import (
     CosmologySet,
     Function,
     Number,
+    Truth,
     Word,
     families,
     result_phrase,
 )
 from cellfuncs.errors import CellError, DomainError, InputError, MissingInput
+from cellfuncs.families.sky import Moment
 
 PAGE: Final = Path(__file__).with_name("REFERENCE.md")
 
@@ -51,13 +54,16 @@ class Example:
             return self.value.shown
         if isinstance(self.value, str):
             return f'"{self.value}"'
-        return f"{self.value:.10g} {self.unit}".rstrip()
+        digits = 13 if self.unit == "d" else 10  # a Julian date's days alone have seven
+        return f"{self.value:.{digits}g} {self.unit}".rstrip()
 
 
 def example(call: str) -> Example:
     """Compute an example; ValueError where it is not a call of a function with plain values."""
+    # what stands in a cell between braces is a range written out
+    written = call.removeprefix("=").strip().translate(str.maketrans("{;}", "[,]"))
     try:
-        tree = ast.parse(call.removeprefix("=").strip(), mode="eval").body
+        tree = ast.parse(written, mode="eval").body
     except SyntaxError:
         raise ValueError(f"the example {call} cannot be read") from None
     if not isinstance(tree, ast.Call):
@@ -84,6 +90,8 @@ def _value(node: ast.expr, call: str) -> Any:
             return -_value(node.operand, call)
         case ast.Name(id="TRUE" | "FALSE"):
             return node.id == "TRUE"
+        case ast.List():
+            return [_value(cell, call) for cell in node.elts]
         case ast.Call():
             made, arguments = _called(node, call)
             return made(*arguments)
@@ -103,8 +111,14 @@ def _unit(made: Function, arguments: list[Any]) -> str:
     """Return the result's unit; where it is that of an argument, the one given or usual there."""
     if not made.unit.startswith("as "):
         return "" if made.gives_text else made.unit
-    for argument, value in zip(made.arguments, arguments, strict=False):
+    for argument, value in zip(made.arguments, made.bound(arguments), strict=True):
         if argument.name == made.unit.removeprefix("as "):
+            if isinstance(argument, FunctionName):
+                inner = arguments[1]
+                return _unit(argument.parsed(value), inner if isinstance(inner, list) else [inner])
+            if isinstance(argument, Part):
+                unit = argument.units[value]
+                return "" if unit == "text" or unit.startswith("as ") else unit
             if isinstance(argument, Number):
                 return argument.unit
             return "" if isinstance(argument, Choice) else str(value)
@@ -153,7 +167,7 @@ def semantics(made: Function) -> list[str]:
         notes.append(
             "There is no plain formula of it: a cell needs the add-in, or `cellfuncs fill`."
         )
-    return [made.summary, *notes]
+    return [made.summary, *notes, *([f"Caution: {made.caution}"] if made.caution else [])]
 
 
 def help_text(made: Function) -> str:
@@ -197,6 +211,7 @@ def description(made: Function) -> dict[str, Any]:
         "family": made.family,
         "summary": made.summary,
         "notes": made.notes,
+        "caution": made.caution,
         "syntax": made.syntax,
         "unit": made.unit,
         "arguments": [_argument_description(argument) for argument in made.arguments],
@@ -236,6 +251,12 @@ def _kind(argument: Argument) -> str:
         return "number"
     if isinstance(argument, CosmologySet):
         return "cosmology"
+    if isinstance(argument, Moment):
+        return "moment"
+    if isinstance(argument, Truth):
+        return "truth"
+    if isinstance(argument, WholeRange):
+        return "range"
     return "text" if isinstance(argument, Word) else "any"
 
 
@@ -262,7 +283,10 @@ def list_text() -> str:
     parts = []
     for family, group in in_reading_order().items():
         lines = [f"{family}: {family_summary(group)}"]
-        lines += [f"  {made.name:{room}}{made.summary}" for made in group]
+        for made in group:
+            lines.append(f"  {made.name:{room}}{made.summary}")
+            if made.caution:
+                lines.append(_wrapped(made.caution, " " * (2 + room), 2 + room))
         parts.append("\n".join(lines))
     return "\n\n".join(parts)
 
@@ -294,7 +318,7 @@ def _page_lines() -> Iterator[str]:
         yield f"**[{family}](#{family})**: {family_summary(group)}"
         yield ""
         for made in group:
-            yield f"- {_link(made)}: {_text(made.summary)}"
+            yield f"- {_link(made)}: {_text(f'{made.summary} {made.caution}'.strip())}"
     for family, group in grouped.items():
         yield ""
         yield f"## {family}"

@@ -129,6 +129,7 @@ _UFUNC_NAMES = {
     "cos": "COS",
     "sinh": "SINH",
     "arcsinh": "ASINH",
+    "floor": "INT",
 }
 
 _FOLDED: dict[str, Callable[..., float]] = {
@@ -215,7 +216,29 @@ log = _of_float(math.log, np.log)
 log10 = _of_float(math.log10, np.log10)
 log1p = _of_float(math.log1p, np.log1p)
 sin = _of_float(math.sin, np.sin)
+cos = _of_float(math.cos, np.cos)
 sinh = _of_float(math.sinh, np.sinh)
+floor = _of_float(math.floor, np.floor)
+
+
+def angle_of(x: Real, y: Real) -> Real:
+    """Return the angle from the x axis to the point (x, y), −π to π."""
+    if isinstance(x, Expr) or isinstance(y, Expr):
+        return build("ATAN2", x, y)
+    return math.atan2(y, x) if type(x) is float and type(y) is float else np.arctan2(y, x)
+
+
+def modulo(x: Real, period: float) -> Real:
+    """Return what is left of x above a multiple of the period, 0 to below the period."""
+    return x - period * floor(x / period)
+
+
+def kept(words: str, value: Real) -> Real:
+    """Return the value, which a template computes in a column of its own, called by these words.
+
+    What several formulas of a row need is computed once so, and no formula gets too long.
+    """
+    return Expr("kept", node(words), value) if isinstance(value, Expr) else value
 
 
 def either(condition: Real, yes: Callable[[], Real], no: Callable[[], Real]) -> Real:

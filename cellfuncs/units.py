@@ -46,9 +46,12 @@ def _converter(from_unit: str, to_unit: str) -> Any:
     from astropy import units
 
     start, end = unit_of(from_unit), unit_of(to_unit)
+    if start == end:
+        return float
     try:
         return start.get_converter(end)
-    except units.UnitConversionError:
+    # a logarithmic unit, such as mag(AB), has no converter
+    except (units.UnitConversionError, AttributeError, TypeError):
         raise InputError(f"{from_unit!r} and {to_unit!r} are units of different kinds") from None
 
 

@@ -29,6 +29,8 @@ quick = settings(
     suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large],
 )
 
+OBSERVED = (101.287, -16.716, 2_461_398.6458, -70.4, -24.6, 2600.0)
+
 # A call of each function that works, typed by hand.
 WORKS: dict[str, tuple[Any, ...]] = {
     "LINE_WAVELENGTH": ("H alpha", "air"),
@@ -76,8 +78,34 @@ WORKS: dict[str, tuple[Any, ...]] = {
     "EXPANSION_FATE": ("WMAP9",),
     "UNITS_CONVERTED": (500.7, "nm", "Angstrom"),
     "COSMOLOGY_VALUE": ("H0", "WMAP9"),
+    "MEAN_WEIGHTED": ([0.0501, None, 0.0503], [0.0002, 0.0001, 0.0001], "sigma"),
+    "VELOCITY_DISPERSION": ([6900.0, 7150.0, 6420.0, "star", 7010.0], 0.02, "gapper", "sigma"),
+    "HUBBLE_FIT": ([10.0, 20.0, 30.0], [710.0, 1380.0, 2150.0], None, "slope", False),
+    "UNCERTAINTY": ("DISTANCE_LUMINOSITY", [0.5, "WMAP9"], [0.01, None]),
+    "MEMBERSHIP": (7010.0, 6850.0, 290.0, 3.0),
+    "REDSHIFT_SOLVED": ([6892.84, 5105.8, 5258.65], "vacuum", 0.0, 7.0, "z"),
+    "VELOCITY_BARYCENTRIC": OBSERVED,
+    "VELOCITY_HELIOCENTRIC": OBSERVED,
+    "REDSHIFT_BARYCENTRIC": (0.0512, *OBSERVED),
+    "VELOCITY_IN_FRAME": (1250.0, 187.706, 12.391, "barycentric", "cmb"),
+    "TIME_JULIAN": (46_380.1458,),
+    "TIME_BARYCENTRIC": (2_461_398.6458, 101.287, -16.716, -70.4, -24.6, 2600.0),
+    "TIME_SIDEREAL": (2_461_398.6458, -70.4),
+    "ANGLE_HOUR": OBSERVED,
+    "ALTITUDE": OBSERVED,
+    "AIRMASS": OBSERVED,
+    "ANGLE_FROM_TEXT": ("06h45m08.9s", True),
     "REASON": ("DISTANCE_LUMINOSITY", 0.5),
     "PROVENANCE": ("constants",),
+}
+
+# What takes a range as one thing, by position: a range there makes no column of results.
+WHOLE: dict[str, set[int]] = {
+    "MEAN_WEIGHTED": {0, 1},
+    "VELOCITY_DISPERSION": {0},
+    "HUBBLE_FIT": {0, 1, 2},
+    "UNCERTAINTY": {1, 2},
+    "REDSHIFT_SOLVED": {0},
 }
 
 
@@ -88,7 +116,7 @@ def test_every_function_has_a_call_here_that_works() -> None:
 
 
 def good_scalar(made: Function, result: Any) -> bool:
-    if made.unit == "text":
+    if made.unit == "text" or (made.gives_text and isinstance(result, str)):
         return isinstance(result, str) and result.strip() != ""
     return type(result) is float and math.isfinite(result)
 
@@ -97,7 +125,7 @@ def good(made: Function, result: Any) -> bool:
     """Tell whether a result is a good scalar, or an array with NaN (None) where there is none."""
     if not isinstance(result, np.ndarray):
         return good_scalar(made, result)
-    if made.unit == "text":
+    if made.gives_text:
         return all(each is None or good_scalar(made, each) for each in result.reshape(-1).tolist())
     return result.dtype == np.float64 and not bool(np.isinf(result).any())
 
@@ -293,6 +321,53 @@ LIMITS: list[tuple[str, int, str, list[float], list[float]]] = [
     ("REDSHIFT_FROM_LOOKBACK", 0, "time", [*NEGATIVE, 13.9, 1e300], [0.0, 13.7]),
     ("EXPANSION_RATE", 0, "z", Z_SPECTRAL, [0.0, 1100.0]),
     ("DECELERATION", 0, "z", Z_SPECTRAL, [0.0, 1100.0]),
+    ("VELOCITY_DISPERSION", 1, "z_system", Z_SPECTRAL, [-0.001, 0.0, 7.0]),
+    ("MEMBERSHIP", 2, "sigma", NOT_POSITIVE, [1e-300, 53.3, 53.4, 1e9]),
+    ("MEMBERSHIP", 3, "times", NOT_POSITIVE, [1e-300, 0.5, 3.0, 1e9]),
+    ("REDSHIFT_SOLVED", 2, "z_min", [*Z_SPECTRAL, 7.0, 8.0], [-0.9, 0.0, 0.04]),
+    ("REDSHIFT_SOLVED", 3, "z_max", [*Z_SPECTRAL, 0.0, -0.5], [0.06, 7.0, 1e3]),
+]
+RA = ([-1e-9, -15.0, 360.000_001, 400.0], [0.0, 101.287, 360.0])
+DEC = ([-90.000_001, 90.000_001, 1e300], [-89.9, 0.0, 90.0])
+LONGITUDE = ([-180.000_001, -200.0, 360.000_001], [-180.0, 0.0, 289.6, 360.0])
+LATITUDE = ([95.0, -90.000_001, 90.000_001], [-90.0, 0.0, 90.0])
+HEIGHT = ([-500.001, 20_001.0, 2.6e6], [-430.0, 0.0, 5000.0])
+# 1960 to 2099: a spreadsheet's serials, then Julian dates
+UTC = (
+    [-1.0, 0.0, 21_915.99, 73_051.0, 999_999.0, 2_436_934.49, 2_488_069.5, 20_261_224.0],
+    [21_916.0, 73_050.99, 2_436_934.5, 2_488_069.49],
+)
+for name, first in [
+    *((name, 0) for name in ("VELOCITY_BARYCENTRIC", "VELOCITY_HELIOCENTRIC")),
+    *((name, 0) for name in ("ANGLE_HOUR", "ALTITUDE")),
+    ("REDSHIFT_BARYCENTRIC", 1),
+]:
+    LIMITS += [
+        (name, first, "ra", *RA),
+        (name, first + 1, "dec", *DEC),
+        (name, first + 2, "utc", *UTC),
+        (name, first + 3, "longitude", *LONGITUDE),
+        (name, first + 4, "latitude", *LATITUDE),
+        (name, first + 5, "height", *HEIGHT),
+    ]
+LIMITS += [
+    ("REDSHIFT_BARYCENTRIC", 0, "z", Z_SPECTRAL, [-0.001, 0.0, 7.0]),
+    ("VELOCITY_IN_FRAME", 1, "ra", *RA),
+    ("VELOCITY_IN_FRAME", 2, "dec", *DEC),
+    ("TIME_JULIAN", 0, "utc", *UTC),
+    ("TIME_BARYCENTRIC", 0, "utc", *UTC),
+    ("TIME_BARYCENTRIC", 1, "ra", *RA),
+    ("TIME_BARYCENTRIC", 2, "dec", *DEC),
+    ("TIME_BARYCENTRIC", 3, "longitude", *LONGITUDE),
+    ("TIME_BARYCENTRIC", 4, "latitude", *LATITUDE),
+    ("TIME_BARYCENTRIC", 5, "height", *HEIGHT),
+    ("TIME_SIDEREAL", 0, "utc", *UTC),
+    ("TIME_SIDEREAL", 1, "longitude", *LONGITUDE),
+    ("AIRMASS", 0, "ra", RA[0], [80.0, 101.287, 120.0]),
+    ("AIRMASS", 1, "dec", DEC[0], [-90.0, 0.0, 30.0]),
+    ("AIRMASS", 3, "longitude", LONGITUDE[0], [-70.4, 289.6, -100.0]),
+    ("AIRMASS", 4, "latitude", LATITUDE[0], [-80.0, 0.0, 30.0]),
+    ("AIRMASS", 5, "height", *HEIGHT),
 ]
 every_limit = pytest.mark.parametrize(
     ("name", "position", "argument", "refused", "taken"),
@@ -391,7 +466,7 @@ WORD_ARGUMENTS = [
     (name, position)
     for name, arguments in WORKS.items()
     for position, value in enumerate(arguments)
-    if isinstance(value, str)
+    if isinstance(value, str) and name != "ANGLE_FROM_TEXT"
 ]
 
 
@@ -453,6 +528,11 @@ def test_an_empty_required_argument_is_missing(made: Function) -> None:
         with pytest.raises(MissingInput) as raised:
             made(*WORKS[made.name][:position])
         assert raised.value.shown == "#N/A"
+        if position in WHOLE.get(made.name, ()):
+            for nothing in ([None, ""], [[math.nan], [None]], np.full(3, np.nan)):
+                with pytest.raises(MissingInput, match=f"^{made.name}: .* is empty"):
+                    made(*with_one(made.name, position, nothing))
+            continue
         column = made(*with_one(made.name, position, [None, WORKS[made.name][position]]))
         assert column[0] is None or column[0] != column[0]
         assert same(column[1], made(*WORKS[made.name]))
@@ -497,12 +577,14 @@ def test_a_column_gives_what_its_rows_give(made: Function, data: st.DataObject) 
         position for position, value in enumerate(WORKS[made.name]) if isinstance(value, float)
     ]
     arguments: list[Any] = list(WORKS[made.name])
+    columns = set()
     length = data.draw(st.integers(1, 5))
     for position in positions:
         if data.draw(st.booleans()):
             own = st.just(arguments[position])
             values = st.lists(st.one_of(cells, own), min_size=length, max_size=length)
             arguments[position] = data.draw(values)
+            columns.add(position)
     words = [
         position
         for position, value in enumerate(WORKS[made.name])
@@ -512,12 +594,13 @@ def test_a_column_gives_what_its_rows_give(made: Function, data: st.DataObject) 
         if data.draw(st.booleans()):
             each = st.sampled_from([arguments[position], *ALTERNATIVES[arguments[position]]])
             arguments[position] = data.draw(st.lists(each, min_size=length, max_size=length))
-    if not any(isinstance(value, list) for value in arguments):
+            columns.add(position)
+    if not columns:
         return
     found = made(*arguments)
     assert found.shape == (length,)
     for row in range(length):
-        one = [value[row] if isinstance(value, list) else value for value in arguments]
+        one = [value[row] if at in columns else value for at, value in enumerate(arguments)]
         here = found[row]
         alone, error = outcome(made, one)
         if error is not None:
@@ -536,6 +619,14 @@ ALTERNATIVES = {
     "comoving": ["luminosity", "light-travel", "hubble"],
     "WMAP9": ["Planck18", "planck13"],
     "H0": ["Om0", "m_nu"],
+    "gapper": ["standard", "Biweight"],
+    "sigma": ["count"],
+    "slope": ["intercept", "scatter"],
+    "z": ["lines", "chance"],
+    "DISTANCE_LUMINOSITY": ["distance_comoving", "AGE_AT_REDSHIFT"],
+    "barycentric": ["lsrk", "LSRD", "galactocentric"],
+    "cmb": ["local-group", " CMB "],
+    "06h45m08.9s": ["6 45 9", "12:00", "101.29d"],
 }
 
 

@@ -32,7 +32,7 @@ from cellfuncs.catalogue import (
     Argument,
     CosmologySet,
     Function,
-    Number,
+    Numeric,
     left_out,
 )
 from cellfuncs.errors import CellError, InputError, MissingInput
@@ -276,7 +276,7 @@ def _as_array(argument: Argument, column: list[Any], passed_on: dict[int, ErrorC
     if isinstance(argument, CosmologySet):
         # a number is no set's name, but would make the catalogue take the column for a range
         column = [argument.default if value is None else str(value) for value in column]
-    elif isinstance(argument, Number):
+    elif isinstance(argument, Numeric):
         return np.array([_as_number(argument, value) for value in column])
     # numpy would take a number among texts for a text
     array = np.empty(len(column), dtype=object)
@@ -284,13 +284,13 @@ def _as_array(argument: Argument, column: list[Any], passed_on: dict[int, ErrorC
     return array
 
 
-def _as_number(argument: Number, value: Any) -> float:
+def _as_number(argument: Numeric, value: Any) -> float:
     """Return the number of an element, NaN where there is none."""
     if type(value) is float:
         return value
     if left_out(value):
         return float(argument.default) if argument.optional else np.nan
     try:
-        return argument.parsed(value)
+        return float(argument.parsed(value))
     except CellError:
         return np.nan

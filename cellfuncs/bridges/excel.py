@@ -141,7 +141,8 @@ def vba_name(name: str) -> str:
 
 def function_help(made: Function) -> str:
     """Return what the function wizard shows of a function."""
-    return _short(f"{made.summary} Gives {result_phrase(made)}.")
+    caution = f" {made.caution}" if made.caution else ""
+    return _short(f"{made.summary}{caution} Gives {result_phrase(made)}.")
 
 
 def argument_help(argument: Argument) -> str:

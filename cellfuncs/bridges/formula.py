@@ -6,7 +6,7 @@ hidden table. Inside SUMPRODUCT only operators act on a range, because not every
 a function of a range element by element there: eˣ is EXP(1)^x, √x is x^0.5.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
@@ -56,7 +56,7 @@ SETTINGS_COSMOLOGY: Final = Cosmology(
 HIDDEN_TABLES: Final = _tables()
 """Every range that a plain formula may name, with what it holds from top to bottom."""
 
-_RANK = {"<": 1, "<=": 1, ">": 1, ">=": 1, "=": 1, "+": 3, "-": 3, "*": 4, "/": 4, "^": 5}
+_RANK = {"<": 1, "<=": 1, ">": 1, ">=": 1, "=": 1, "&": 2, "+": 3, "-": 3, "*": 4, "/": 4, "^": 5}
 _ATOM = 9
 
 
@@ -113,6 +113,10 @@ def _rendered(expr: Expr) -> tuple[str, int]:
         return ("TRUE()" if arguments[0] else "FALSE()"), _ATOM
     if operation == "name" or operation.startswith("#"):
         return (arguments[0] if arguments else operation), _ATOM
+    if operation == "kept":
+        return _rendered(arguments[1])
+    if operation == "reading":
+        raise NotTraceable("a text is read in columns of its own, which only a template has")
     if operation == "negative":
         return "-" + _operand(arguments[0], _ATOM), 0
     if operation in _RANK:
@@ -173,6 +177,11 @@ class Guarded:
     allowed: tuple[Expr, ...] = ()
     """Conditions that a number out of its domain breaks, the inner ones first: an outer one may
     only be asked where they hold"""
+
+    def mapped(self, change: Callable[[Expr], Expr]) -> "Guarded":
+        """Return the same with every expression in it changed."""
+        parts = (tuple(map(change, each)) for each in (self.blank, self.typed, self.allowed))
+        return Guarded(change(self.value), *parts)
 
     def formula(self, when_blank: Expr | None = None) -> str:
         """Return the whole formula, equals sign included.

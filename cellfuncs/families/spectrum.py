@@ -5,11 +5,12 @@ from typing import Any
 
 import numpy as np
 
+from cellfuncs.arguments import Measured, MeasuredLines, part_of
 from cellfuncs.catalogue import Choice, Number, Word, function
 from cellfuncs.constants import LIGHT_SPEED
-from cellfuncs.errors import NotFound
+from cellfuncs.errors import CellError, DomainError, InputError, NotFound
 from cellfuncs.families.velocity import CONVENTION
-from cellfuncs.physics import conventions, lines, refraction
+from cellfuncs.physics import conventions, identification, lines, refraction
 from cellfuncs.symbols import Expr, Real, choose, looked_up
 
 CIDDOR = "Ciddor 1996, Applied Optics 35, 1566"
@@ -246,3 +247,81 @@ def redshift_combined(z1: Real, z2: Real) -> Real:
 def redshift_relative(z: Real, z_reference: Real) -> Real:
     """Redshift as seen from a frame that is itself at z_reference."""
     return (z - z_reference) / (1 + z_reference)
+
+
+@function(
+    wavelengths=MeasuredLines(
+        meaning="measured wavelengths, two or more",
+        wavelength=WAVELENGTH,
+        error=Number(meaning="error", unit="Angstrom", above=0.0),
+        strength=Number(meaning="strength"),
+    ),
+    medium=MEDIUM,
+    z_min=Number(meaning="lowest redshift searched", above=-1.0),
+    z_max=Number(meaning="highest redshift searched", above=-1.0),
+    part=part_of(z="", sigma="", lines="text", count="", chance=""),
+    unit="as part",
+    source=f"{LINE_TABLE}; the search and its chance are this project's own",
+    traceable=False,
+    examples=(
+        "=REDSHIFT_SOLVED({6892.84;5105.8;5258.65;5208.31})",
+        '=REDSHIFT_SOLVED({6892.84;5105.8;5258.65;5208.31}, "vacuum", 0, 7, "lines")',
+    ),
+)
+def redshift_solved(
+    wavelengths: Any,
+    medium: Any = "vacuum",
+    z_min: Real = 0.0,
+    z_max: Real = 7.0,
+    part: Any = "z",
+) -> Any:
+    """Redshift at which the measured wavelengths fall on lines of the table.
+
+    "lines" names the line of each wavelength, and other redshifts that are nearly as good; "count"
+    is how many have one. "chance" is the probability that wavelengths without any order would do
+    as well somewhere between z_min and z_max, or that another redshift is the true one, if that is
+    more: believe no redshift whose chance is above 0.01. A wavelength without an error counts as
+    good to 0.5 Å. Of a line twice as strong as the usual it is half as likely that it is false;
+    the sign of a strength, of emission or absorption, does not count. All lines of the table are
+    taken for equally likely.
+    """
+    if not isinstance(z_min, np.ndarray) and not isinstance(z_max, np.ndarray):
+        return _solved(wavelengths, medium, z_min, z_max, part)
+    limits = np.broadcast(z_min, z_max)
+    found = np.full(limits.shape, None, dtype=object)
+    for at, (low, high) in zip(np.ndindex(limits.shape), limits, strict=True):
+        try:
+            found[at] = _solved(wavelengths, medium, float(low), float(high), part)
+        except InputError:
+            raise
+        except CellError:
+            continue
+    return found
+
+
+def _solved(measured: Measured, medium: str, z_min: float, z_max: float, part: str) -> Any:
+    if not z_max > z_min:
+        raise DomainError(f"z_max is {z_max:.10g}; it must be above z_min, {z_min:.10g}")
+    seen = measured.wavelengths
+    if np.unique(seen).size < 2:
+        raise NotFound(f"one wavelength, {seen[0]:.10g} Å, tells no redshift: any line may be it")
+    found = identification.identify(
+        np.array([in_vacuum(each, medium, "a wavelength") for each in seen.tolist()]),
+        np.where(np.isnan(measured.errors), identification.ASSUMED_ERROR, measured.errors),
+        identification.relative(measured.strengths),
+        z_min,
+        z_max,
+    )
+    best = found.best
+    if part == "lines":
+        words = [
+            f"{wavelength:.2f} {name or 'not identified'}"
+            for wavelength, name in zip(seen.tolist(), best.names, strict=True)
+        ]
+        words += [f"or z = {each.z:.5f} with {each.count} lines" for each in found.rivals[:3]]
+        if len(found.rivals) > 3:
+            words.append(f"or one of {len(found.rivals) - 3} more")
+        return "; ".join(words)
+    if part == "chance":
+        return found.chance
+    return float(getattr(best, part))

@@ -7,7 +7,7 @@ from cellfuncs.catalogue import Anything, Choice, Number, Word, find, function
 from cellfuncs.constants import EDITION
 from cellfuncs.errors import CellError
 from cellfuncs.families.distance import COSMOLOGY
-from cellfuncs.physics import expansion
+from cellfuncs.physics import earth, expansion
 from cellfuncs.symbols import Real, choose
 from cellfuncs.version import __version__
 
@@ -98,6 +98,6 @@ def provenance(what: Any = "version") -> Any:
         version=lambda: f"cellfuncs {__version__}",
         constants=lambda: EDITION,
         cosmology=lambda: f"{expansion.DEFAULT}: {expansion.PUBLISHED[expansion.DEFAULT][0]}",
-        ephemeris=lambda: "none in use: no function of this version needs the Earth's motion",
-        **{"earth-orientation": lambda: "none in use: no function of this version needs it"},
+        ephemeris=earth.ephemeris_in_words,
+        **{"earth-orientation": earth.orientation_in_words},
     )

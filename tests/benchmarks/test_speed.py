@@ -8,41 +8,14 @@ take minutes it is given a sample, and the ratio is that of the times for a valu
 import subprocess
 import sys
 from collections.abc import Callable
-from time import perf_counter
 from typing import Any
 
 import numpy as np
-import pytest
 from astropy.cosmology import Planck18
 from pytest_benchmark.fixture import BenchmarkFixture
+from turns import best_in_turns
 
 from cellfuncs import age_at_redshift, distance_luminosity
-
-
-def seconds(work: Callable[[], Any], times: int) -> float:
-    start = perf_counter()
-    for _ in range(times):
-        work()
-    return (perf_counter() - start) / times
-
-
-def best_in_turns(
-    ours: tuple[Callable[[], Any], int], theirs: tuple[Callable[[], Any], int], rounds: int
-) -> tuple[float, float]:
-    """Return the best seconds of each; a side is its work and how often a round does it."""
-    for work, _ in (ours, theirs):
-        work()  # tables are made and caches filled on first use
-    turns = [(seconds(*ours), seconds(*theirs)) for _ in range(rounds)]
-    return min(one for one, _ in turns), min(other for _, other in turns)
-
-
-@pytest.fixture
-def show(capsys: pytest.CaptureFixture[str]) -> Callable[[str], None]:
-    def printed(line: str) -> None:
-        with capsys.disabled():
-            print(f"\n  {line}")
-
-    return printed
 
 
 def test_one_luminosity_distance(benchmark: BenchmarkFixture, show: Callable[[str], None]) -> None:

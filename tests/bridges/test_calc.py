@@ -6,7 +6,6 @@ are those of its own API (XCellRange.getError): 503 #NUM!, 504 Err:504, 519 #VAL
 32767 #N/A.
 """
 
-import ast
 import os
 import re
 import signal
@@ -18,7 +17,9 @@ from pathlib import Path
 from typing import Any
 
 import pytest
+from examples import call_in
 
+import cellfuncs
 from cellfuncs.bridges.calc.emptiness import Call, calls, reference
 from cellfuncs.bridges.calc.extension import VARIADIC, Extension, build
 from cellfuncs.catalogue import CATALOGUE, Anything, Function, Number
@@ -58,12 +59,16 @@ def office(request: pytest.FixtureRequest, tmp_path_factory: pytest.TempPathFact
 def good_arguments(function: Function) -> Iterator[list[Any]]:
     """Give the arguments of the function's own examples, which stand in the reference too."""
     for example in function.examples:
-        call = ast.parse(example.removeprefix("="), mode="eval").body
-        assert isinstance(call, ast.Call)
-        yield [
-            float(value) if isinstance(value, int) else value
-            for value in map(ast.literal_eval, call.args)
-        ]
+        yield call_in(example)[1]
+
+
+def written_out(value: Any) -> str:
+    """Give a value as it stands in a formula; a range is a row of it."""
+    if isinstance(value, list):
+        return "{" + ";".join(map(written_out, value)) + "}"
+    if isinstance(value, bool):
+        return f"{value}()".upper()
+    return f'"{value}"' if isinstance(value, str) else repr(value)
 
 
 def cases(function: Function) -> Iterator[list[Any]]:
@@ -106,11 +111,15 @@ def test_every_function_gives_in_a_cell_what_python_gives(office: Office) -> Non
     width = max(len(case) for _, case in asked)
     formulas = [
         f"={function.name}("
-        + ";".join(f"{chr(65 + place)}{row}" for place in range(len(case)))
+        + ";".join(
+            written_out(value) if isinstance(value, list) else f"{chr(65 + place)}{row}"
+            for place, value in enumerate(case)
+        )
         + ")"
         for row, (function, case) in enumerate(asked, start=1)
     ]
-    found = office.run(ASKED, cells=[case for _, case in asked], formulas=formulas)
+    cells = [[None if isinstance(each, list) else each for each in case] for _, case in asked]
+    found = office.run(ASKED, cells=cells, formulas=formulas)
     assert width < 26
     wrong = [
         (function.name, case, result, expected(function, case))
@@ -128,7 +137,7 @@ def test_arguments_in_the_formula_itself_and_left_out(office: Office) -> None:
     ]
     formulas = []
     for function, case in asked:
-        texts = [f'"{value}"' if isinstance(value, str) else repr(value) for value in case]
+        texts = [written_out(value) for value in case]
         # the place of an argument left out may be there or not
         open_place = ";" if len(case) < len(function.arguments) and case else ""
         formulas.append(f"={function.name}({';'.join(texts)}{open_place})")
@@ -188,6 +197,58 @@ def test_a_cosmology_from_two_columns(office: Office) -> None:
     )
     wanted = CATALOGUE["DISTANCE_LUMINOSITY"](0.5, {"H0": 70.0, "Om0": 0.3, "w0": -0.9})
     assert found[0] == pytest.approx(wanted, rel=1e-12)
+
+
+def test_a_range_that_is_taken_whole(office: Office) -> None:
+    """Empty cells and remarks do not count; a 0 does, and so does FALSE."""
+    sheet = [
+        [0.0, 10.0, 690.0, 30.0, "VELOCITY_SUM", 0.0],
+        [None, 20.0, 1410.0, 20.0, "DISTANCE_COMOVING", None],
+        [0.5, None, 300.0, 10.0],
+        ["cloudy", 35.0, "lost", 10.0],
+        [0.1, 40.0, 2790.0, None],
+        [None, 55.0, 3900.0, 25.0],
+    ]
+    rows = [0, 1, 4, 5]
+    distances, velocities = ([sheet[row][place] for row in rows] for place in (1, 2))
+    values, sigmas = [0.0, 0.5], [30.0, 10.0]
+    wanted = {
+        "MEAN_WEIGHTED(A1:A6;D1:D6)": cellfuncs.mean_weighted(values, sigmas),
+        'MEAN_WEIGHTED(A1:A6;D1:D6;"count")': 2.0,
+        'MEAN_WEIGHTED(A1:A6;D1;"count")': 3.0,
+        "HUBBLE_FIT(B1:B6;C1:C6)": cellfuncs.hubble_fit(distances, velocities),
+        'HUBBLE_FIT(B1:B6;C1:C6;;"slope";FALSE())': cellfuncs.hubble_fit(
+            distances, velocities, None, "slope", False
+        ),
+        'HUBBLE_FIT(B1:B6;C1:C6;;"slope";TRUE())': cellfuncs.hubble_fit(distances, velocities),
+        'HUBBLE_FIT(B1:B6;C1:C6;D1:D6;"count")': 3.0,
+        "UNCERTAINTY(E1;B1:B2;D1:D2)": cellfuncs.uncertainty("VELOCITY_SUM", [10, 20], [30, 20]),
+        "UNCERTAINTY(E2;F1;D1)": cellfuncs.uncertainty("DISTANCE_COMOVING", 0.0, 30.0),
+        "UNCERTAINTY(E2;F2;D2)": {"error": ERRORS["#N/A"]},
+        "UNCERTAINTY(E1;B1:B2;A2:A5)": {"error": ERRORS["#VALUE!"]},
+        "MEAN_WEIGHTED(A2:A2;D1)": {"error": ERRORS["#N/A"]},
+        "MEAN_WEIGHTED(A4:A4;D1)": {"error": ERRORS["#VALUE!"]},
+        "MEAN_WEIGHTED(A1:A5;A1:A5)": {"error": ERRORS["#NUM!"]},
+        "MEAN_WEIGHTED(A1:A6;B1:B5)": {"error": ERRORS["#VALUE!"]},
+        'REASON("MEAN_WEIGHTED";A1:A5;A1:A5)': (
+            "MEAN_WEIGHTED: sigmas, cell 1, is 0; it must be above 0"
+        ),
+        "REDSHIFT_SOLVED(B10:C13)": cellfuncs.redshift_solved([6892.84, 5105.8, 5258.65, 5208.31]),
+        'REDSHIFT_SOLVED(B10:B13;;;;"count")': 4.0,
+    }
+    spectrum = [[None, seen, None] for seen in (6892.84, 5105.8, 5258.65, 5208.31)]
+    cells = [*sheet, *[[None]] * 3, *spectrum, *[[None]] * (len(wanted) - 13)]
+    found = office.run(ASKED, cells=cells, formulas=[f"={formula}" for formula in wanted])
+    wrong = [
+        (formula, result, expectation)
+        for (formula, expectation), result in zip(wanted.items(), found, strict=True)
+        if (
+            result["error"] != expectation["error"]
+            if isinstance(expectation, dict) and isinstance(result, dict)
+            else not same(result, expectation)
+        )
+    ]
+    assert wrong == []
 
 
 def test_sums_and_means_do_not_step_over_a_bad_cell(office: Office) -> None:
@@ -279,6 +340,38 @@ def test_where_an_empty_cell_and_a_zero_look_alike_no_number_is_made_up(office: 
     ])  # fmt: skip
     assert [each["error"] if isinstance(each, dict) else each for each in found[:2]] == [32767] * 2
     assert found[2] == pytest.approx(CATALOGUE["DISTANCE_LUMINOSITY"](1.0), rel=1e-12)
+
+
+def test_dates_of_both_date_systems(office: Office) -> None:
+    """The same date, typed into a document that counts from 1899-12-30 and from 1904-01-01."""
+    found = office.run(
+        """
+document = opened()
+sheet = document.Sheets.getByIndex(0)
+def cell(name): return sheet.getCellRangeByName(name)
+result = []
+for year, month, day in ((1899, 12, 30), (1904, 1, 1)):
+    first = document.NullDate
+    first.Year, first.Month, first.Day = year, month, day
+    document.NullDate = first
+    cell("A1").Formula = "=DATE(2027;4;2)+TIME(5;0;0)"
+    cell("A2").Formula = "=A1+1"
+    cell("B1").Formula = "=TIME_JULIAN(A1)"
+    cell("B2").Formula = '=TIME_JULIAN("2027-04-02T05:00:00")'
+    cell("B3").Formula = "=TIME_JULIAN(2461497.75)"
+    cell("C1").Formula = "=TIME_SIDEREAL(A1;0)"
+    sheet.getCellRangeByName("D1:D2").setArrayFormula("=TIME_JULIAN(A1:A2)")
+    result.append(cell("A1").Value)
+    result += [cell(name).Value for name in ("B1", "B2", "B3", "C1", "D1", "D2")]
+document.close(True)
+"""
+    )
+    assert found[0] - found[7] == 1462
+    start = CATALOGUE["TIME_JULIAN"]("2027-04-02T05:00:00")
+    sidereal = CATALOGUE["TIME_SIDEREAL"](start, 0.0)
+    wanted = [start, start, 2461497.75, sidereal, start, start + 1]
+    assert found[1:7] == pytest.approx(wanted, abs=1e-8)
+    assert found[8:] == pytest.approx(wanted, abs=1e-8)
 
 
 @pytest.mark.parametrize(

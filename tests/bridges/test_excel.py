@@ -5,7 +5,6 @@ What could not be run for want of Excel is the manual check in DEVELOPERS.md.
 
 import csv
 import inspect
-import json
 import re
 import sys
 from collections.abc import Callable, Iterator, Sequence
@@ -30,6 +29,7 @@ from bridges.excel_stand_ins import (
     variant,
     windows_with_excel,
 )
+from examples import call_in
 from openpyxl.utils.datetime import to_excel
 
 import cellfuncs
@@ -324,10 +324,13 @@ def calls() -> list[tuple[Function, list[Any]]]:
     """The documented examples, as values"""
     found = []
     for made in CATALOGUE.values():
-        for example in made.examples:
-            text = example.partition("(")[2].removesuffix(")")
-            found.append((made, json.loads(f"[{text}]", parse_int=float)))
+        found += [(made, call_in(example)[1]) for example in made.examples]
     return found
+
+
+def in_cells(arguments: Sequence[Any]) -> list[Any]:
+    """Each list as a range of one column"""
+    return [[[cell] for cell in each] if isinstance(each, list) else each for each in arguments]
 
 
 @pytest.mark.parametrize(
@@ -336,12 +339,14 @@ def calls() -> list[tuple[Function, list[Any]]]:
 def test_a_cell_gets_what_python_gets(cell: Cell, made: Function, arguments: list[Any]) -> None:
     expected = made(*arguments)
     left_out = [MISSING] * (len(made.arguments) - len(arguments))
-    assert same(cell(made.name, *arguments, *left_out), expected)
-    # the same from cells: each argument a range of one
-    assert same(cell(made.name, *([[each]] for each in arguments), *left_out), expected)
+    given = in_cells(arguments)
+    assert same(cell(made.name, *given, *left_out), expected)
+    # the same from cells: each argument a range, of one if it is no range already
+    ranges = [each if isinstance(each, list) else [[each]] for each in given]
+    assert same(cell(made.name, *ranges, *left_out), expected)
     # an empty cell is as good as an argument left out
     empty = [[[None]]] * len(left_out)
-    assert same(cell(made.name, *arguments, *empty), expected)
+    assert same(cell(made.name, *given, *empty), expected)
 
 
 BAD = (-1e300, None, "x", 1e300, 0.0, "", 1e-5)
@@ -356,7 +361,8 @@ def test_whatever_an_argument_is_the_cell_shows_what_python_says(
         for bad in BAD:
             given = [*arguments[:position], bad, *arguments[position + 1 :]]
             left_out = [MISSING] * (len(made.arguments) - len(given))
-            assert same(cell(made.name, *given, *left_out), in_python(made, *given)), given
+            found = cell(made.name, *in_cells(given), *left_out)
+            assert same(found, in_python(made, *given)), given
 
 
 def calls_of(made: Function) -> list[list[Any]]:
@@ -376,11 +382,11 @@ def first_number(made: Function) -> int | None:
     ids=lambda made: made.name,
 )
 def test_a_column_gives_a_column_each_element_as_alone(cell: Cell, made: Function) -> None:
-    arguments = calls_of(made)[0]
+    arguments = max(calls_of(made), key=len)
     position = first_number(made)
     assert position is not None
     values = [arguments[position], *BAD, arguments[position] * 1.01]
-    given = [*arguments[:position], [[each] for each in values], *arguments[position + 1 :]]
+    given = in_cells([*arguments[:position], values, *arguments[position + 1 :]])
     left_out = [MISSING] * (len(made.arguments) - len(given))
     found = cell(made.name, *given, *left_out)
     assert len(found) == len(values)
@@ -503,9 +509,11 @@ def test_a_defect_of_ours_is_an_error_value_and_no_traceback(cell: Cell) -> None
 def test_pywin32_can_carry_every_result(cell: Cell, made: Function) -> None:
     arguments = calls_of(made)[0]
     left_out = [MISSING] * (len(made.arguments) - len(arguments))
-    kind, _ = variant(cell(made.name, *arguments, *left_out))
-    assert kind == (VT_BSTR if made.gives_text else VT_R8)
-    column = [[[each], [None]] for each in arguments]
+    kind, _ = variant(cell(made.name, *in_cells(arguments), *left_out))
+    assert kind == (VT_BSTR if isinstance(made(*arguments), str) else VT_R8)
+    column = [
+        in_cells([each])[0] if isinstance(each, list) else [[each], [None]] for each in arguments
+    ]
     found = cell(made.name, *column, *left_out)
     if isinstance(found, list):
         kind, rows = variant(found)

@@ -14,6 +14,7 @@ import importlib
 import json
 import struct
 import sys
+from datetime import date
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -145,8 +146,36 @@ def with_empty_cells(
     )
 
 
+DAY_ONE = date(1899, 12, 30)
+"""From which the functions take a number for a date"""
+DATES_BELOW = 1_000_000.0
+"""A number above it is a Julian date, which no document counts otherwise"""
+
+
+def with_dates(arguments: Any, moments: frozenset[int], document: Any) -> tuple[Any, ...]:
+    """Return the arguments with dates as counted from 1899-12-30, whichever day the document has.
+
+    A spreadsheet brought from an old Macintosh counts from 1904.
+    """
+    counted_from = document.getPropertyValue("NullDate")
+    first = date(counted_from.Year, counted_from.Month, counted_from.Day)
+    days = (first - DAY_ONE).days
+    if not days:
+        return tuple(arguments)
+
+    def moved(value: Any) -> Any:
+        if isinstance(value, tuple):
+            return tuple(moved(each) for each in value)
+        return value + days if type(value) is float and value < DATES_BELOW else value
+
+    return tuple(
+        moved(value) if position in moments else value for position, value in enumerate(arguments)
+    )
+
+
 def called(
     name: str,
+    moments: frozenset[int],
     words: frozenset[int],
     required: frozenset[int],
 ) -> Callable[..., Table]:
@@ -154,12 +183,17 @@ def called(
 
     def method(self: Any, *arguments: Any) -> Table:
         global answer
+        document = None
+        if moments:
+            document, *arguments = arguments  # type: ignore[assignment]
         if answer is None:
             answer = answering()
             # or each array formula has the collector look through all that was imported
             gc.freeze()
         if 0.0 in arguments:
             arguments = with_empty_cells(name, arguments, words, required)
+        if document is not None:
+            arguments = with_dates(arguments, moments, document)
         try:
             result = answer(name, arguments)
         except Unanswered:
@@ -221,7 +255,12 @@ for each in SETTINGS["functions"]:
     setattr(
         Functions,
         each["name"],
-        called(each["name"], frozenset(each["words"]), frozenset(each["required"])),
+        called(
+            each["name"],
+            frozenset(each["moments"]),
+            frozenset(each["words"]),
+            frozenset(each["required"]),
+        ),
     )
 
 g_ImplementationHelper = unohelper.ImplementationHelper()  # noqa: N816 - pyuno looks for it

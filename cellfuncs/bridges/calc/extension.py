@@ -16,7 +16,9 @@ from importlib.util import find_spec
 from pathlib import Path
 from xml.sax.saxutils import escape, quoteattr
 
-from cellfuncs.catalogue import CATALOGUE, Argument, Function, Number, result_phrase
+from cellfuncs.arguments import WholeRange
+from cellfuncs.catalogue import CATALOGUE, Argument, Function, Number, Numeric, Truth, result_phrase
+from cellfuncs.families.sky import Moment
 from cellfuncs.version import __version__
 
 IDENTIFIER = "org.cellfuncs.calc"
@@ -122,12 +124,17 @@ def types(extension: Extension) -> str:
     """Return the interface in UNO's own language.
 
     An `any` takes a number, a text, a range or nothing. What comes back is always a table of
-    cells, mostly of one: Calc takes nothing else from an array formula.
+    cells, mostly of one: Calc takes nothing else from an array formula. Where a function takes a
+    moment, Calc hands the document over too, which says from which day it counts the dates.
     """
     modules = extension.identifier.split(".")
+    document = ["[in] com::sun::star::beans::XPropertySet document"]
     lines = [
         f" sequence< sequence< any > > {function.name}("
-        + ", ".join(f"[in] any p{number:02}" for number, _ in enumerate(parameters(function)))
+        + ", ".join(
+            (document if _moments(function) else [])
+            + [f"[in] any p{number:02}" for number, _ in enumerate(parameters(function))]
+        )
         + ");"
         for function in extension.functions
     ]
@@ -179,11 +186,12 @@ def _wizard_entry(function: Function) -> str:
 
 
 def _help(function: Function) -> str:
-    return f"{function.summary} Gives {result_phrase(function)}. ({function.family})"
+    caution = f" {function.caution}" if function.caution else ""
+    return f"{function.summary}{caution} Gives {result_phrase(function)}. ({function.family})"
 
 
 def _argument_help(argument: Argument) -> str:
-    unit = getattr(argument, "unit", "") if isinstance(argument, Number) else ""
+    unit = argument.unit if isinstance(argument, Number) else ""
     sentence = argument.meaning + (f" [{unit}]" if unit else "") + f"; {argument.allowed}"
     if argument.optional:
         return f"{sentence}; left out: {argument.default_text}"
@@ -208,6 +216,7 @@ def settings(extension: Extension) -> str:
         "functions": [
             {
                 "name": function.name,
+                "moments": _moments(function),
                 "words": [] if function.variadic else _words(function.arguments),
                 "required": [
                     position
@@ -221,7 +230,18 @@ def settings(extension: Extension) -> str:
     return json.dumps(found, indent=1) + "\n"
 
 
+def _moments(function: Function) -> list[int]:
+    """Return the positions of the arguments that are moments."""
+    return [
+        position
+        for position, argument in enumerate(function.arguments)
+        if isinstance(argument, Moment)
+    ]
+
+
 def _words(arguments: Iterable[Argument]) -> list[int]:
     return [
-        position for position, argument in enumerate(arguments) if not isinstance(argument, Number)
+        position
+        for position, argument in enumerate(arguments)
+        if not isinstance(argument, (Numeric, Truth, WholeRange))
     ]
