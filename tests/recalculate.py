@@ -36,14 +36,17 @@ openpyxl writes an input with 16 significant digits, so a double may arrive one 
 from __future__ import annotations
 
 import atexit
+import io
 import json
 import os
+import re
 import shutil
 import signal
 import subprocess
 import sys
 import tempfile
 import time
+import zipfile
 from dataclasses import dataclass, field
 from functools import cache
 from pathlib import Path
@@ -72,6 +75,19 @@ def recalculated(path: Path, engine: str) -> Sheets:
         "ironcalc": _by_ironcalc,
     }
     return engines[engine](path.resolve(), _written_cells(path))
+
+
+def save(workbook: Any, path: Path) -> Path:
+    """Save as spreadsheet programs do: openpyxl calls an empty cell a number, for IronCalc 0."""
+    packed = io.BytesIO()
+    workbook.save(packed)
+    with zipfile.ZipFile(packed) as old, zipfile.ZipFile(path, "w", zipfile.ZIP_DEFLATED) as new:
+        for part in old.namelist():
+            content = old.read(part)
+            if part.startswith("xl/worksheets/sheet"):
+                content = re.sub(rb'(<c r="\w+" s="\d+") t="n"(?: ?/>|></c>)', rb"\1/>", content)
+            new.writestr(part, content)
+    return path
 
 
 _Written = dict[str, list[tuple[int, int, str]]]

@@ -32,12 +32,18 @@ from cellfuncs.bridges.formula import (
     text_of,
 )
 from cellfuncs.catalogue import Argument, Choice, CosmologySet, Number, Word
+from cellfuncs.families.sky import AngleText, Moment
 from cellfuncs.families.spectrum import LineName
 from cellfuncs.physics.expansion import cosmology_from
 from cellfuncs.physics.lines import lines
 from cellfuncs.symbols import Expr, NotTraceable, name, node
 
-TRACEABLE = [made for made in CATALOGUE.values() if made.traceable]
+# What follows the Earth or reads a text takes working columns: test_steps.py.
+TRACEABLE = [
+    made
+    for made in CATALOGUE.values()
+    if made.traceable and not any(isinstance(each, (Moment, AngleText)) for each in made.arguments)
+]
 OTHERS = [made for made in CATALOGUE.values() if not made.traceable]
 OF_COSMOLOGY = [
     made for made in TRACEABLE if any(isinstance(each, CosmologySet) for each in made.arguments)
@@ -89,6 +95,7 @@ GRIDS: dict[str, tuple[float, ...]] = {
         *(299_000.0, 400_000.0),
     ),
 }
+GRIDS["deg"] = (-89.2, -33.3, -0.01, 0.0, 12.5, 45.0, 89.9, 123.4, 266.4, 359.99)
 ORDINARY = {"": 0.05, "Angstrom": 6892.84, "GHz": 109.78, "km.s-1": 1500.0, "mag": 17.5}
 
 SPELLINGS = (
