@@ -455,7 +455,24 @@ def _slope(
     try:
         return evaluated(_kept_slope(made, at, _words(values, places), tuple(places)), numbers)
     except NotTraceable:
+        pass
+    # of a moment there is an ephemeris, but no expression: it stays the number that it is
+    others = [place for place in places if isinstance(made.arguments[place], Number)]
+    if at not in others or others == list(places):
         return _extrapolated(made, at, values, places)
+
+    def of_one(*given: float) -> float:
+        row = list(values)
+        for place, number in zip(places, given, strict=True):
+            row[place] = float(number)
+        return float(
+            evaluated(
+                slope_of(made, at, row, others),
+                {_placeholder(made.arguments[place]): row[place] for place in others},
+            )
+        )
+
+    return _of_each(of_one, [values[place] for place in places])
 
 
 def _words(values: Sequence[Any], places: Sequence[int]) -> tuple[Any, ...]:
@@ -531,7 +548,11 @@ def _extrapolated(made: Function, at: int, values: Sequence[Any], places: Sequen
             step = -step
         return _ridders(lambda h: (moved(h) - moved(0.0)) / h, step, 1)
 
-    numbers = [values[place] for place in places]
+    return _of_each(of_one, [values[place] for place in places])
+
+
+def _of_each(of_one: Callable[..., float], numbers: Sequence[Real]) -> Real:
+    """Return what a function of floats gives, for columns row by row."""
     if all(type(number) is float for number in numbers):
         return of_one(*numbers)
     return np.vectorize(of_one, otypes=[float])(*numbers)

@@ -250,9 +250,7 @@ def _line(rows: Rows, given: Mapping[str, Any]) -> Guarded:
         "intercept": lambda: height - slope * middle,
         "scatter": lambda: root(squared() / free),
         "slope_error": lambda: (
-            1 / root(curvature)
-            if has_errors
-            else root(squared() / free / curvature)
+            1 / root(curvature) if has_errors else root(squared() / free / curvature)
         ),
     }
     return Guarded(found[part](), (), (), tuple(allowed))
