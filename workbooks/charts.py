@@ -2,13 +2,14 @@
 
 from itertools import cycle
 
-from openpyxl.chart import Reference, ScatterChart, Series
+from openpyxl.chart import BarChart, Reference, ScatterChart, Series
 from openpyxl.chart.layout import Layout, ManualLayout
 from openpyxl.chart.shapes import GraphicalProperties
+from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.worksheet import Worksheet
 
 from cellfuncs import units
-from workbooks.recipe import Chart, Recipe, Table
+from workbooks.recipe import Chart, Histogram, Recipe, Table
 from workbooks.sheets import FIRST_ROW, INK, TITLE, TYPE_HERE, Book, letters_of, put, quoted
 
 MARKERS = (
@@ -24,7 +25,8 @@ MARKERS = (
 def chart_sheet(book: Book, recipe: Recipe, table: Table, rows: int) -> None:
     """Add the sheet with a table's charts, and the hidden one with what they draw."""
     charts = table.sheet.charts
-    title = "Chart" if len(recipe.tables) == 1 else f"{table.sheet.name[:24]} chart"
+    several = len(recipe.tables) + len(recipe.summaries) > 1
+    title = f"{table.sheet.name[:24]} chart" if several else "Chart"
     sheet = book.sheet(title)
     sheet.page_setup.fitToHeight = 1
     put(sheet, "A1", recipe.text.title, TITLE)
@@ -33,6 +35,9 @@ def chart_sheet(book: Book, recipe: Recipe, table: Table, rows: int) -> None:
     for chart in charts:
         drawn = _chart(table, chart, points, rows)
         sheet.add_chart(drawn, f"A{row}")
+        row += 24
+    for histogram in table.sheet.histograms:
+        sheet.add_chart(_bars(table, histogram, points, rows), f"A{row}")
         row += 24
 
 
@@ -59,6 +64,61 @@ def _points_sheet(book: Book, table: Table, rows: int) -> Worksheet:
                 drawn = f"AND({drawn},OR({','.join(shown_with).format(row=row)}))"
             points.cell(row, place, f"=IF({drawn},{cell}{scale},NA())")
     return points
+
+
+def _bars(table: Table, histogram: Histogram, points: Worksheet, rows: int) -> BarChart:
+    """Draw how often the values of a column occur, in bins of one width from least to largest."""
+    letters = letters_of(table)
+    place = points.max_column + 1
+    used, counted, low, number = (get_column_letter(place + offset) for offset in range(4))
+    last = FIRST_ROW - 1 + rows
+    column = table.columns[histogram.of]
+    for letter, words in ((used, "in use"), (counted, "to count"), (low, "middle"), (number, "n")):
+        points[f"{letter}1"] = f"{histogram.of}: {words}"
+    for row in range(FIRST_ROW, last + 1):
+        cell = f"{quoted(table.sheet.name)}!{letters[histogram.of]}{row}"
+        condition = f"ISNUMBER({cell})"
+        if histogram.where:
+            only = f"{quoted(table.sheet.name)}!{letters[histogram.where]}{row}"
+            # an error value there must not become one of the whole count
+            condition = f"IF(AND({condition},ISNUMBER({only})),{only}=1,FALSE())"
+        points[f"{used}{row}"] = f'=IF({condition},{cell},"")'
+        points[f"{counted}{row}"] = f"=IF({condition},{cell},1E+300)"
+    area = f"${used}${FIRST_ROW}:${used}${last}"
+    start, width = f"MIN({area})", f"((MAX({area})-MIN({area}))/{histogram.bins})"
+    values = f"${counted}${FIRST_ROW}:${counted}${last}"
+    for at in range(histogram.bins):
+        row = FIRST_ROW + at
+        points[f"{low}{row}"] = f"=IF(COUNT({area})>1,{start}+{at + 0.5}*{width},NA())"
+        # the largest value belongs to the last bin
+        end = (
+            f"<={start}+{at + 1}*{width}*1.000000001"
+            if at + 1 == histogram.bins
+            else (f"<{start}+{at + 1}*{width}")
+        )
+        inside = f"({values}>={start}+{at}*{width})*({values}{end})"
+        points[f"{number}{row}"] = f"=IF(COUNT({area})>1,SUMPRODUCT({inside}),NA())"
+        points[f"{low}{row}"].number_format = (
+            column.format.partition(";")[0].removeprefix("+") or "General"
+        )
+    drawn = BarChart()
+    drawn.type, drawn.style, drawn.gapWidth = "col", 2, 4
+    drawn.title = histogram.title
+    drawn.width, drawn.height = 24, 11.5
+    drawn.visible_cells_only = False
+    drawn.x_axis.title, drawn.y_axis.title = column.header, "Number"
+    drawn.x_axis.delete = drawn.y_axis.delete = False
+    drawn.x_axis.tickLblPos = "low"
+    drawn.y_axis.number_format = "0"
+    drawn.legend = None
+    bottom = FIRST_ROW + histogram.bins - 1
+    counts = Reference(points, min_col=place + 3, min_row=FIRST_ROW, max_row=bottom)
+    series = Series(counts, title=column.label)
+    series.graphicalProperties = GraphicalProperties(solidFill=TYPE_HERE)
+    drawn.series.append(series)
+    drawn.set_categories(Reference(points, min_col=place + 2, min_row=FIRST_ROW, max_row=bottom))
+    drawn.layout = Layout(manualLayout=ManualLayout(x=0.09, y=0.12, w=0.87, h=0.68))
+    return drawn
 
 
 def _drawn(table: Table) -> list[tuple[str, str]]:

@@ -1,24 +1,22 @@
 """The command `cellfuncs`."""
 
-import json
 import os
 import sys
 from contextlib import suppress
-from dataclasses import asdict
+from datetime import UTC, datetime
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import Annotated
 
 import typer
 
 from cellfuncs.errors import CellError
 from workbooks.connect import connect_calc
 from workbooks.connect_excel import connect_excel
+from workbooks.fill_command import fill
 from workbooks.functions import functions
 from workbooks.logbook import LogbookError
 from workbooks.recipe import RecipeError
-
-if TYPE_CHECKING:
-    from workbooks.fill import Report
+from workbooks.statuses import DONE, WRONG_CALL
 
 app = typer.Typer(
     name="cellfuncs",
@@ -28,8 +26,6 @@ app = typer.Typer(
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
 )
-
-DONE, DATA_PROBLEMS, WRONG_CALL = 0, 1, 2
 
 
 @app.callback(invoke_without_command=True)
@@ -61,12 +57,22 @@ def template(
     rows: Annotated[
         int | None, typer.Option(min=1, max=100_000, help="Rows to prepare in each sheet.")
     ] = None,
+    first: Annotated[
+        str | None,
+        typer.Option(
+            "--from", help="First date that plain formulas follow the Earth through; today."
+        ),
+    ] = None,
+    last: Annotated[
+        str | None, typer.Option("--to", help="Last such date; two years after the first.")
+    ] = None,
     overwrite: Annotated[bool, typer.Option(help="Let the output replace a file.")] = False,
 ) -> None:
     """Make a template workbook that computes in any spreadsheet program, nothing installed."""
     from workbooks import build
-    from workbooks.package import check_target
     from workbooks.recipe import built_in, load
+    from workbooks.saving import check_target
+    from workbooks.season import Season
 
     if recipe is None:
         for name in built_in():
@@ -77,6 +83,7 @@ def template(
     if output is not None and output.suffix.lower() != ".xlsx":
         raise typer.BadParameter(f"{output}: a template is an .xlsx file")
     loaded = load(recipe)
+    dates = Season.between(first, last, datetime.now(UTC).date())
     target = output or Path(f"{loaded.name}.xlsx")
     kinds = {formulas: target}
     if formulas == "addin":
@@ -84,51 +91,12 @@ def template(
         for each in kinds.values():
             check_target(each, overwrite=overwrite)
     for kind, path in kinds.items():
-        build.build(loaded, path, formulas=kind, rows=rows, overwrite=overwrite)
+        build.build(loaded, path, formulas=kind, rows=rows, season=dates, overwrite=overwrite)
         needs = build.FORMULAS[kind].needs
         print(f"{path}: {loaded.text.title}" + (f". {needs}" if needs else ""))
 
 
-@app.command()
-def fill(
-    logbook: Annotated[Path, typer.Argument(help="The logbook, .xlsx.")],
-    output: Annotated[
-        Path | None,
-        typer.Option("--output", "-o", help="Where to write; left out: NAME-filled.xlsx beside."),
-    ] = None,
-    recipe: Annotated[
-        str | None,
-        typer.Option(
-            "--recipe", "-r", help="A recipe's name or .toml file; a template needs none."
-        ),
-    ] = None,
-    in_place: Annotated[
-        bool, typer.Option("--in-place", help="Write into the file itself.")
-    ] = False,
-    overwrite: Annotated[bool, typer.Option(help="Let the output replace a file.")] = False,
-    as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
-) -> None:
-    """Compute a logbook's columns and write them in; everything else stays byte for byte."""
-    from workbooks import fill as filling
-    from workbooks.recipe import load
-
-    if in_place and output is not None:
-        raise typer.BadParameter("give --in-place or --output, not both")
-    if not logbook.name or logbook.is_dir():
-        raise typer.BadParameter(f"{logbook} is a folder, not a logbook")
-    beside = logbook.with_name(f"{logbook.stem}-filled{logbook.suffix}")
-    target = logbook if in_place else output or beside
-    if not in_place and target.resolve() == logbook.resolve():
-        raise typer.BadParameter(f"{target} is the logbook itself; say --in-place to write into it")
-    report = filling.fill(
-        logbook, target, load(recipe) if recipe else None, overwrite=overwrite or in_place
-    )
-    if as_json:
-        print(json.dumps(asdict(report), ensure_ascii=False, indent=1))
-    else:
-        _print_report(report)
-    if report.has_problems:
-        raise typer.Exit(DATA_PROBLEMS)
+app.command()(fill)
 
 
 app.command()(functions)
@@ -136,24 +104,6 @@ connect = typer.Typer(no_args_is_help=True, help="Connect the functions to a spr
 app.add_typer(connect, name="connect")
 connect.command("calc")(connect_calc)
 connect.command("excel")(connect_excel)
-
-
-def _print_report(report: "Report") -> None:
-    print(f"{report.logbook} by the recipe {report.recipe} → {report.output}")
-    for sheet in report.sheets:
-        print(f"\n{sheet.name}: {_rows(sheet.filled)} filled, {_rows(sheet.refused)} refused")
-        for note in sheet.notes:
-            print(f"  note     {note}")
-        for remark in sheet.refusals:
-            print(f"  refused  {remark}")
-        for remark in sheet.doubts:
-            print(f"  doubtful {remark}")
-    for skipped in report.skipped:
-        print(f"\n{skipped.cell}: skipped, {skipped.sentence}")
-
-
-def _rows(count: int) -> str:
-    return f"{count} row" if count == 1 else f"{count} rows"
 
 
 def main() -> None:

@@ -1,33 +1,37 @@
-"""A recipe's formulas: parsed, held to their units, and worked out in each way a workbook needs.
+"""A recipe's formulas as nodes, worked out in each way a workbook needs.
 
-A formula is written in the keys of columns and settings, numbers, + - * / ** and the functions of
-the catalogue: `redshift_from_line(observed, line, medium)`. It is parsed with `ast`, from which a
-fixed list of node types is taken; nothing is ever executed.
+`workbooks.parsing` makes them from the text.
 """
 
-import ast
 from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterable, Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
 
-from cellfuncs import units
 from cellfuncs.bridges.formula import SETTINGS_COSMOLOGY, Guarded, any_of, guarded
-from cellfuncs.catalogue import CATALOGUE, Argument, Choice, CosmologySet, Function, Number
-from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, near_matches
+from cellfuncs.catalogue import (
+    Argument,
+    CosmologySet,
+    Function,
+    Number,
+    is_empty,
+)
+from cellfuncs.errors import CellError, DomainError, InputError, MissingInput
+from cellfuncs.families.sky import Moment, moment_of_number
 from cellfuncs.physics.expansion import Cosmology
 from cellfuncs.symbols import Expr, build, name, node
 
 TEXT: Final = "text"
 
+TIME: Final = "time"
+"""The unit of a column of moments, whose cells hold whatever a Moment may be written as"""
+
+TRUTH: Final = "truth"
+
 COSMOLOGY_RANGE: Final = "cosmology_parameters"
 """The range of a workbook that holds the cosmology in use, two columns: parameter and value"""
-
-
-class ExpressionError(ValueError):
-    """A formula that a recipe cannot hold; the message says why."""
 
 
 @dataclass(frozen=True)
@@ -39,6 +43,8 @@ class Row:
 
     values: Mapping[str, Any]
     cosmology: Cosmology
+    whole: "Columns | None" = None
+    """The sheet that the row is of"""
 
 
 @dataclass(frozen=True)
@@ -85,7 +91,7 @@ class Node(ABC):
     def of_row(self, row: Row) -> Any:
         """Return the whole formula's value in one row; raise a CellError where it has none."""
         value = self.in_row(row)
-        if self.unit != TEXT:
+        if self.unit not in (TEXT, TIME):
             return _number(self, value)
         if value is None:
             raise MissingInput("the result is empty")
@@ -98,10 +104,12 @@ class Node(ABC):
 
 @dataclass(frozen=True)
 class Literal(Node):
-    value: float | str
+    value: float | str | bool
 
     @property
     def unit(self) -> str | None:  # type: ignore[override]
+        if isinstance(self.value, bool):
+            return TRUTH
         return TEXT if isinstance(self.value, str) else None
 
     def in_row(self, row: Row) -> Any:
@@ -129,7 +137,7 @@ class Key(Node):
 
     def of_columns(self, columns: Columns) -> Any:
         value = columns.values[self.key]
-        return np.nan if value is None and self.unit != TEXT else value
+        return np.nan if value is None and self.unit not in (TEXT, TIME) else value
 
     def of_cells(self, cells: Cells) -> Guarded:
         return Guarded(cells.symbols[self.key])
@@ -165,7 +173,107 @@ class Scaled(Node):
         yield from self.part.parts()
 
 
-_COMPUTE: Final[Mapping[str, np.ufunc]] = {
+@dataclass(frozen=True)
+class Either(Node):
+    """The first part where the inputs that it needs are filled, the second elsewhere."""
+
+    first: Node
+    second: Node
+    unit: str | None
+
+    @property
+    def awaited(self) -> list[Key]:
+        """What must be filled for the first part"""
+        return list(needed(self.first))
+
+    @property
+    def alternatives(self) -> tuple[tuple[str, ...], ...]:
+        """The keys of which one group must be filled"""
+        second = self.second
+        others = (
+            second.alternatives
+            if isinstance(second, Either)
+            else (tuple(part.key for part in needed(second)),)
+        )
+        return (tuple(part.key for part in self.awaited), *others)
+
+    def in_row(self, row: Row) -> Any:
+        if any(is_empty(part.in_row(row)) for part in self.awaited):
+            return self.second.in_row(row)
+        return self.first.in_row(row)
+
+    def falls_back(self, columns: Columns) -> Any:
+        """Return in which rows the second part counts."""
+        empty: Any = False
+        for part in self.awaited:
+            values = columns.values[part.key]
+            if part.key in columns.empty:
+                empty = empty | columns.empty[part.key]
+            elif isinstance(values, np.ndarray):
+                filled = [not is_empty(value) for value in values.tolist()]
+                empty = empty | ~np.array(filled, dtype=bool)
+            else:
+                empty = empty | is_empty(values)
+        return empty
+
+    def of_columns(self, columns: Columns) -> Any:
+        empty = self.falls_back(columns)
+        return np.where(empty, self.second.of_columns(columns), self.first.of_columns(columns))
+
+    def falls_back_in_cells(self, cells: Cells) -> Expr:
+        """Return the condition under which the second part counts."""
+        return any_of(tuple(Expr("blank", part.of_cells(cells).value) for part in self.awaited))
+
+    def of_cells(self, cells: Cells) -> Guarded:
+        first, second = self.first.of_cells(cells), self.second.of_cells(cells)
+        empty = self.falls_back_in_cells(cells)
+        filled = Expr("NOT", empty)
+        if isinstance(self.second, Key):
+            is_text = self.second.unit in (TEXT, TIME)
+            typed = () if is_text else (Expr("ISNUMBER", second.value),)
+            second = Guarded(second.value, (second.value,), typed)
+        # an error in the second part must not be asked about where the first one counts
+        missing = any_of(tuple(Expr("blank", cell) for cell in second.blank or (node("-"),)))
+        blank = second.blank and (
+            Expr("IF", empty, Expr("IF", missing, node(""), node("-")), node("-")),
+        )
+        return Guarded(
+            Expr("IF", empty, second.value, first.value),
+            tuple(blank),
+            (
+                *(Expr("OR", empty, condition) for condition in first.typed),
+                *(Expr("OR", filled, condition) for condition in second.typed),
+            ),
+            # a condition may only be asked where the cells are filled
+            (
+                *(Expr("IF", empty, node(True), condition) for condition in first.allowed),
+                *(Expr("IF", filled, node(True), condition) for condition in second.allowed),
+            ),
+        )
+
+    def parts(self) -> Iterator[Node]:
+        yield self
+        yield from self.first.parts()
+        yield from self.second.parts()
+
+
+def needed(tree: Node) -> Iterator[Key]:
+    """Yield the keys that a formula cannot do without."""
+    match tree:
+        case Key():
+            yield tree
+        case Scaled(part=part):
+            yield from needed(part)
+        case Arithmetic(left=left, right=right):
+            yield from needed(left)
+            yield from needed(right)
+        case Call(function=function, arguments=arguments):
+            for argument, given in zip(function.arguments, arguments, strict=True):
+                if given is not None and not argument.optional:
+                    yield from needed(given)
+
+
+COMPUTE: Final[Mapping[str, np.ufunc]] = {
     "+": np.add,
     "-": np.subtract,
     "*": np.multiply,
@@ -184,14 +292,14 @@ class Arithmetic(Node):
     def in_row(self, row: Row) -> Any:
         sides = [_number(side, side.in_row(row)) for side in (self.left, self.right)]
         with np.errstate(all="ignore"):
-            result = float(_COMPUTE[self.operation](*sides))
+            result = float(COMPUTE[self.operation](*sides))
         if not np.isfinite(result):
             raise DomainError(f"{sides[0]:g} {self.operation} {sides[1]:g} is not a finite number")
         return result
 
     def of_columns(self, columns: Columns) -> Any:
         with np.errstate(all="ignore"):
-            result = _COMPUTE[self.operation](
+            result = COMPUTE[self.operation](
                 self.left.of_columns(columns), self.right.of_columns(columns)
             )
         return np.where(np.isfinite(result), result, np.nan)
@@ -226,7 +334,9 @@ class Call(Node):
     def in_row(self, row: Row) -> Any:
         return self.function(*self._given(lambda part: part.in_row(row), row.cosmology))
 
-    def of_columns(self, columns: Columns) -> Any:
+    def given_columns(self, columns: Columns) -> list[Any]:
+        """Return what the function takes for all rows at once."""
+
         def given(part: Node) -> Any:
             values = part.of_columns(columns)
             inner = part.part if isinstance(part, Scaled) else part
@@ -237,7 +347,10 @@ class Call(Node):
                 values = np.where(empty, argument.default, values)
             return values
 
-        result, _ = self.function.column(self._given(given, columns.cosmology))
+        return self._given(given, columns.cosmology)
+
+    def of_columns(self, columns: Columns) -> Any:
+        result, _ = self.function.column(self.given_columns(columns))
         return result if np.ndim(result) else result[()]
 
     def _given(self, value_of: Callable[[Node], Any], cosmology: Cosmology) -> list[Any]:
@@ -280,20 +393,7 @@ class Call(Node):
     def of_cells(self, cells: Cells) -> Guarded:
         if cells.calls is not None:
             return self._as_call(cells)
-        given: dict[str, Any] = {}
-        inner: list[Guarded] = []
-        for argument, part in zip(self.function.arguments, self.arguments, strict=True):
-            if part is None:
-                if isinstance(argument, CosmologySet):
-                    given[argument.name] = SETTINGS_COSMOLOGY
-            elif isinstance(part, Literal):
-                given[argument.name] = part.value
-            else:
-                piece = part.of_cells(cells)
-                if argument.optional and piece.blank:
-                    piece = _with_default(piece, node(argument.default))
-                inner.append(piece)
-                given[argument.name] = piece.value
+        given, inner = given_in_cells(self, cells)
         own = guarded(self.function, given)
         return Guarded(
             own.value,
@@ -309,6 +409,27 @@ class Call(Node):
                 yield from part.parts()
 
 
+def given_in_cells(call: Call, cells: Cells) -> tuple[dict[str, Any], list[Guarded]]:
+    """Return what a function is given, by its arguments' names, and what of it are formulas."""
+    given: dict[str, Any] = {}
+    inner: list[Guarded] = []
+    for argument, part in zip(call.function.arguments, call.arguments, strict=True):
+        if part is None:
+            if isinstance(argument, CosmologySet):
+                given[argument.name] = SETTINGS_COSMOLOGY
+        elif isinstance(part, Literal):
+            given[argument.name] = part.value
+        else:
+            piece = part.of_cells(cells)
+            if isinstance(argument, Moment) and part.unit == argument.unit:
+                piece = _numeric_moment(piece)
+            if argument.optional and piece.blank:
+                piece = _with_default(piece, node(argument.default))
+            inner.append(piece)
+            given[argument.name] = piece.value
+    return given, inner
+
+
 def given_arguments(trees: Iterable[Node]) -> Iterator[tuple[Argument, Node | None]]:
     """Yield every argument of every call in the formulas, with the part that is given for it."""
     for tree in trees:
@@ -322,6 +443,14 @@ def _with_default(piece: Guarded, default: Expr) -> Guarded:
     empty = any_of(tuple(Expr("blank", cell) for cell in piece.blank))
     typed = tuple(Expr("OR", empty, condition) for condition in piece.typed)
     return Guarded(Expr("IF", empty, default, piece.value), (), typed, piece.allowed)
+
+
+def _numeric_moment(piece: Guarded) -> Guarded:
+    """Return a number of days as the moment that it is; only a text needs to be read."""
+    value, blank, typed = piece.value, piece.blank, piece.typed
+    if value.operation == "name":
+        blank, typed = (*blank, value), (*typed, Expr("ISNUMBER", value))
+    return Guarded(moment_of_number(value), blank, typed, piece.allowed)
 
 
 def _number(part: Node, value: Any) -> float:
@@ -349,196 +478,3 @@ def _sameness(item: Expr) -> tuple[Any, ...]:
 
 def _is_leaf(part: Expr) -> bool:
     return part.operation in ("name", "number", "text", "truth")
-
-
-def _finite(number: Any) -> float:
-    try:
-        value = float(number)
-    except OverflowError:
-        value = np.inf
-    if not np.isfinite(value):
-        raise ExpressionError("a number in the formula is not finite")
-    return value
-
-
-_OPERATORS: Final[Mapping[type[ast.operator], str]] = {
-    ast.Add: "+",
-    ast.Sub: "-",
-    ast.Mult: "*",
-    ast.Div: "/",
-    ast.Pow: "^",
-}
-
-
-@dataclass(frozen=True)
-class Parser:
-    """Turns formula text into nodes; `known` gives the unit of every key that may be named."""
-
-    known: Mapping[str, str]
-    used: set[str] = field(default_factory=set)
-
-    def parsed(self, text: str, unit: str) -> Node:
-        """Return the formula with its result in `unit`.
-
-        Raises ExpressionError with near matches for an unknown function or key, for units that do
-        not fit, and for anything that is not a formula.
-        """
-        if len(text) > 2000:
-            raise ExpressionError(f"the formula has {len(text)} characters; 2000 are allowed")
-        try:
-            tree = ast.parse(text.strip(), mode="eval")
-        except (SyntaxError, ValueError, RecursionError, MemoryError) as error:
-            reason = error.msg if isinstance(error, SyntaxError) else error
-            raise ExpressionError(f"{text!r} cannot be read as a formula: {reason}") from None
-        try:
-            return self._in_unit(self._node(tree.body), unit, "the result")
-        except RecursionError:
-            raise ExpressionError("the formula is nested too deep") from None
-
-    def _node(self, tree: ast.expr) -> Node:
-        match tree:
-            case ast.Constant(value=bool() | bytes() | complex() | None):
-                pass
-            case ast.Constant(value=int() | float() as number):
-                return Literal(_finite(number))
-            case ast.Constant(value=str() as text):
-                return Literal(text)
-            case ast.Name(id=key):
-                return self._key(key)
-            case ast.UnaryOp(op=ast.USub(), operand=operand):
-                inner = self._node(operand)
-                if isinstance(inner, Literal) and isinstance(inner.value, float):
-                    return Literal(-inner.value)
-                return self._arithmetic("*", Literal(-1.0), inner)
-            case ast.BinOp(left=left, op=op, right=right) if type(op) in _OPERATORS:
-                return self._arithmetic(_OPERATORS[type(op)], self._node(left), self._node(right))
-            case ast.Call(func=ast.Name(id=name), args=args, keywords=keywords):
-                return self._call(name, args, keywords)
-        raise ExpressionError(
-            f"{ast.unparse(tree)!r} is not allowed; a formula has keys, numbers, texts, + - * / ** "
-            "and functions"
-        )
-
-    def _key(self, key: str) -> Key:
-        if key not in self.known:
-            raise ExpressionError(
-                f"{key!r} is neither a column nor a setting ({near_matches(key, self.known)})"
-            )
-        self.used.add(key)
-        return Key(key, self.known[key])
-
-    def _arithmetic(self, operation: str, left: Node, right: Node) -> Node:
-        for side in (left, right):
-            if side.unit == TEXT:
-                raise ExpressionError(f"a text cannot stand beside {operation}")
-        if isinstance(left, Literal) and isinstance(right, Literal):
-            with np.errstate(all="ignore"):
-                value = _COMPUTE[operation](left.value, right.value)
-            return Literal(_finite(value))
-        if operation in "+-":
-            if left.unit is None:
-                left = self._in_unit(left, right.unit, f"what stands left of {operation}")
-            else:
-                right = self._in_unit(right, left.unit, f"what stands right of {operation}")
-            return Arithmetic(operation, left, right, left.unit or right.unit)
-        return Arithmetic(operation, left, right, self._combined(operation, left, right))
-
-    def _combined(self, operation: str, left: Node, right: Node) -> str | None:
-        if operation == "^":
-            if right.unit not in (None, ""):
-                raise ExpressionError("a power must be a pure number")
-            if not left.unit:
-                return left.unit
-            if not isinstance(right, Literal) or not isinstance(right.value, float):
-                raise ExpressionError(f"a power of {left.unit} must be written as a number")
-            return str((units.unit_of(left.unit) ** right.value).to_string())
-        if left.unit is None and right.unit is None:
-            return None
-        one, other = (units.unit_of(side.unit or "") for side in (left, right))
-        return str((one * other if operation == "*" else one / other).to_string())
-
-    def _call(self, name: str, args: list[ast.expr], keywords: list[ast.keyword]) -> Call:
-        found = CATALOGUE.get(name.upper())
-        if found is None or found.variadic:
-            near = near_matches(name, [known.lower() for known in CATALOGUE])
-            raise ExpressionError(f"{name!r} is not a function ({near})")
-        if len(args) > len(found.arguments):
-            raise ExpressionError(f"{found.name} takes at most {len(found.arguments)} arguments")
-        given: dict[str, ast.expr] = {
-            argument.name: part for argument, part in zip(found.arguments, args, strict=False)
-        }
-        names = [argument.name for argument in found.arguments]
-        for keyword in keywords:
-            if keyword.arg not in names:
-                near = near_matches(keyword.arg or "**", names)
-                raise ExpressionError(f"{found.name} has no argument {keyword.arg!r} ({near})")
-            if keyword.arg in given:
-                raise ExpressionError(f"{found.name} is given {keyword.arg!r} twice")
-            given[keyword.arg] = keyword.value
-        groups: dict[str, str] = {}
-        parts: dict[str, Node | None] = {}
-        for argument in found.arguments:
-            if argument.name not in given:
-                if not argument.optional:
-                    raise ExpressionError(f"{found.name} needs its argument {argument.name!r}")
-                parts[argument.name] = None
-                continue
-            part = self._node(given[argument.name])
-            parts[argument.name] = self._fitted(found, argument, part, groups)
-        return Call(found, tuple(parts.values()), self._result_unit(found, parts, groups))
-
-    def _fitted(
-        self, found: Function, argument: Argument, part: Node, groups: dict[str, str]
-    ) -> Node:
-        where = f"{argument.name} of {found.name}"
-        if isinstance(argument, Number):
-            if part.unit == TEXT:
-                raise ExpressionError(f"{where} wants a number, not a text")
-            wanted = argument.unit
-            if argument.like and part.unit is not None:
-                wanted = groups.setdefault(argument.like, part.unit)
-                if argument.unit and not units.same_kind(part.unit, argument.unit):
-                    raise ExpressionError(f"{where} wants {argument.unit}, not {part.unit!r}")
-            return self._checked(argument, self._in_unit(part, wanted, where), where)
-        if part.unit != TEXT:
-            raise ExpressionError(f"{where} wants a text")
-        return self._checked(argument, part, where)
-
-    @staticmethod
-    def _checked(argument: Argument, part: Node, where: str) -> Node:
-        if isinstance(part, Literal):
-            try:
-                argument.parsed(part.value)
-            except CellError as error:
-                raise ExpressionError(f"{where}: {error}") from None
-        return part
-
-    @staticmethod
-    def _result_unit(
-        found: Function, parts: Mapping[str, Node | None], groups: Mapping[str, str]
-    ) -> str:
-        if not found.unit.startswith("as "):
-            return found.unit
-        model = parts[found.unit[3:]]
-        if any(each.name == found.unit[3:] for each in found.arguments if type(each) is Choice):
-            raise ExpressionError(
-                f"{found.name} gives another unit each time; name the setting that holds the value"
-            )
-        if isinstance(model, Literal) and isinstance(model.value, str):
-            return model.value
-        argument = next(each for each in found.arguments if each.name == found.unit[3:])
-        like = getattr(argument, "like", "")
-        return groups.get(like, getattr(argument, "unit", ""))
-
-    @staticmethod
-    def _in_unit(part: Node, unit: str | None, where: str) -> Node:
-        if part.unit == unit or part.unit is None or unit is None:
-            return part
-        if TEXT in (part.unit, unit):
-            kinds = ("a text", "a number") if unit == TEXT else ("a number", "a text")
-            raise ExpressionError(f"{where} must be {kinds[0]}, not {kinds[1]}")
-        try:
-            factor = units.factor(part.unit, unit)
-        except InputError as error:
-            raise ExpressionError(f"{where}: {error}") from None
-        return Scaled(part, factor, unit)

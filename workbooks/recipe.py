@@ -2,7 +2,7 @@
 
 import re
 import tomllib
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping, Set
 from dataclasses import dataclass, field
 from importlib.resources import files
 from pathlib import Path
@@ -11,24 +11,30 @@ from typing import Annotated, Any, Final, Literal
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
 
 from cellfuncs import units
-from cellfuncs.bridges.formula import FormulaError
+from cellfuncs.bridges.formula import LONGEST, FormulaError
+from cellfuncs.bridges.steps import Steps
 from cellfuncs.catalogue import Number
 from cellfuncs.errors import InputError, near_matches
+from cellfuncs.families.sky import Moment
 from cellfuncs.families.spectrum import LineName
 from cellfuncs.physics.expansion import PUBLISHED
-from cellfuncs.symbols import NotTraceable, name
+from cellfuncs.symbols import Expr, NotTraceable, name
 from workbooks.expression import (
     TEXT,
+    TIME,
     Cells,
-    ExpressionError,
+    Either,
     Key,
     Node,
-    Parser,
     Scaled,
     given_arguments,
+    needed,
 )
+from workbooks.gathered import row_keys
 from workbooks.logbook import Header, parse_header
+from workbooks.parsing import ExpressionError, Parser
 from workbooks.settings import COSMOLOGY_CELLS, COSMOLOGY_KEYS, reserved_names
+from workbooks.uncertainty import Uncertainty
 
 BUILT_IN: Final = files("workbooks") / "recipes"
 
@@ -43,6 +49,7 @@ class Model(BaseModel):
 
 Finite = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Text = Annotated[str, Field(strict=True, pattern=r"^[^\x00-\x08\x0b\x0c\x0e-\x1f]*$")]
+Truth = Annotated[bool, Field(strict=True)]
 Count = Annotated[int, Field(strict=True, ge=1, le=1_000_000)]
 
 
@@ -82,11 +89,15 @@ class Column(Limited):
     key: Text
     label: Text
     role: Literal["input", "computed"]
-    kind: Literal["number", "text", "line"] = "number"
+    kind: Literal["number", "text", "line", "time"] = "number"
     unit: Text = ""
+    ucd: Text = ""
     formula: Text = ""
     choices: tuple[Text, ...] = ()
-    required: Annotated[bool, Field(strict=True)] | None = None
+    required: Truth | None = None
+    sigma: Truth | Text | None = None
+    """Of an input, the column with its 1-σ error; of a computed one, whether it has a ± column"""
+    hidden: Truth = False
     format: Text = ""
     width: Finite | None = None
     note: Text = ""
@@ -101,11 +112,34 @@ class Column(Limited):
         return self.kind == "number" and not self.choices
 
 
+class ResultCell(Model):
+    """A number that follows from a sheet's columns as a whole."""
+
+    key: Text
+    label: Text
+    unit: Text = ""
+    formula: Text
+    hidden: Truth = False
+    format: Text = ""
+    note: Text = ""
+
+
 class Chart(Model):
+    """Points of columns over another."""
+
     title: Text
     x: Text
     y: Annotated[tuple[Text, ...], Field(min_length=1)]
     y_label: Text = ""
+
+
+class Histogram(Model):
+    """How often the values of a column occur; with `where`, of the rows in which that is 1."""
+
+    title: Text
+    of: Text
+    where: Text = ""
+    bins: Annotated[int, Field(strict=True, ge=2, le=60)] = 12
 
 
 class Sheet(Model):
@@ -113,7 +147,13 @@ class Sheet(Model):
     rows: Count = 200
     intro: Text = ""
     columns: Annotated[tuple[Column, ...], Field(min_length=1)]
+    results: tuple[ResultCell, ...] = ()
     charts: tuple[Chart, ...] = ()
+    histograms: tuple[Histogram, ...] = ()
+    gathers: Text = ""
+    """The sheet whose groups of rows this one has a row each of"""
+    by: Text = ""
+    """The column of texts that tells those groups apart"""
 
 
 class Document(Model):
@@ -130,13 +170,24 @@ class Problem:
     """What can be said of a row before anything is computed: the first one found is shown."""
 
     column: Column
-    kind: Literal["error", "missing", "not a number", "limit", "not a choice", "not a line"]
+    kind: Literal[
+        "error",
+        "missing",
+        "not a number",
+        "limit",
+        "not a choice",
+        "not a line",
+        "not a time",
+        "beyond",
+    ]
     words: str
     comparison: str = ""
     limit: float | str = 0.0
     """A number in the column's unit, or a setting's key"""
     factor: float = 1.0
     """What takes the setting's unit to the column's"""
+    alternatives: tuple[tuple[str, ...], ...] = ()
+    """Of a missing input: groups of columns of which one must be filled"""
 
 
 @dataclass(frozen=True)
@@ -151,6 +202,12 @@ class Table:
     problems: tuple[Problem, ...]
     used: frozenset[str]
     """Inputs that some formula names"""
+    results: Mapping[str, Node] = field(default_factory=dict)
+    """The formula of each result, by its key"""
+    order: tuple[str, ...] = ()
+    """The keys of computed columns and results, as they can be computed"""
+    gathers: "Table | None" = None
+    """The table whose groups of rows this one has a row each of; the formulas are in its keys"""
 
     @property
     def anchors(self) -> list[str]:
@@ -181,6 +238,8 @@ class Recipe:
     source: str
     text: Document
     tables: tuple[Table, ...]
+    summaries: tuple[Table, ...] = ()
+    """The sheets with a row for each group of rows of one of the tables"""
 
     @property
     def settings(self) -> dict[str, Setting]:
@@ -257,7 +316,9 @@ def _to_key(path: tuple[int | str, ...]) -> tuple[int | str, ...]:
             steps
             and isinstance(steps[-1], str)
             and not (
-                isinstance(step, int) and steps[-1] in ("sheets", "columns", "charts", "settings")
+                isinstance(step, int)
+                and steps[-1]
+                in ("sheets", "columns", "charts", "histograms", "results", "settings")
             )
         ):
             break
@@ -271,6 +332,8 @@ def _fields(path: tuple[int | str, ...]) -> list[str]:
         "sheets": Sheet,
         "columns": Column,
         "charts": Chart,
+        "histograms": Histogram,
+        "results": ResultCell,
         "settings": Setting,
     }
     inside = [models[step] for step in path[:-1] if isinstance(step, str) and step in models]
@@ -309,6 +372,9 @@ class _Places:
         return RecipeError(f"{self.source}, line {self.line(path)}: {message}")
 
 
+_KINDS_UNIT: Final = {"number": TEXT, "text": TEXT, "line": TEXT, "time": TIME}
+"""What stands for a unit where a column holds no numbers; one with choices is of texts"""
+
 LONGEST_LIST: Final = 255
 """Characters that a spreadsheet takes in a list of choices"""
 
@@ -322,6 +388,7 @@ class _Checker:
     place: _Places
     name: str
     settings: dict[str, str] = field(default_factory=dict)
+    results: set[str] = field(default_factory=set)
 
     @property
     def labels(self) -> dict[str, str]:
@@ -344,7 +411,8 @@ class _Checker:
             self._setting_is_good(path, setting)
             self.settings[setting.key] = setting.unit if setting.kind == "number" else TEXT
         titles = [sheet.name.casefold() for sheet in self.text.sheets]
-        tables = []
+        tables: list[Table] = []
+        summaries: list[Table] = []
         for index, sheet in enumerate(self.text.sheets):
             path = ("sheets", index)
             if titles.index(sheet.name.casefold()) != index:
@@ -355,8 +423,13 @@ class _Checker:
                     f"{sheet.name!r} cannot be a sheet's name: 1 to 31 characters,"
                     " none of [ ] : * ? / \\",
                 )
-            tables.append(self._table(path, sheet))
-        return Recipe(self.name, self.place.source, self.text, tuple(tables))
+            if sheet.gathers or sheet.by:
+                summaries.append(self._summary(path, sheet, tables))
+            else:
+                tables.append(self._table(path, sheet))
+        if not tables:
+            raise self.place.error(("sheets", 0), "a recipe needs a sheet to type in")
+        return Recipe(self.name, self.place.source, self.text, tuple(tables), tuple(summaries))
 
     def _key_is_good(self, path: tuple[int | str, ...], key: str, taken: Mapping[str, Any]) -> None:
         path = (*path, "key")
@@ -373,6 +446,10 @@ class _Checker:
                 (*path, "value"),
                 f"the value {setting.value!r} of {setting.key!r} is no {setting.kind}",
             )
+        if setting.choices and (setting.kind != "text" or setting.value not in setting.choices):
+            raise self.place.error(
+                (*path, "choices"), f"the value of {setting.key!r} must be one of its choices"
+            )
 
     def _unit_is_good(self, path: tuple[int | str, ...], unit: str) -> None:
         try:
@@ -384,36 +461,141 @@ class _Checker:
         known: dict[str, str] = {}
         for index, column in enumerate(sheet.columns):
             where = (*path, "columns", index)
-            self._key_is_good(where, column.key, {**self.settings, **known})
+            for each in _with_error(column):
+                self._key_is_good(where, each.key, {**self.settings, **known})
+                known[each.key] = each.unit if each.is_number else _KINDS_UNIT[each.kind]
             self._unit_is_good(where, column.unit)
             self._column_is_good(where, column)
-            known[column.key] = column.unit if column.is_number else TEXT
-        self._labels_differ(path, sheet)
-        parser = Parser({**self.settings, **known})
-        nodes: dict[str, Node] = {}
-        for index, column in enumerate(sheet.columns):
+        sigmas = dict(self._sigmas(path, sheet, known))
+        own = sheet
+        sheet = sheet.model_copy(
+            update={
+                "columns": tuple(each for column in own.columns for each in _with_error(column))
+            }
+        )
+        self._labels_differ(path, own, sheet)
+        results = self._result_units(path, sheet, known)
+        columns = frozenset(known)
+        parser = Parser({**self.settings, **results, **known}, columns=columns)
+        trees: dict[str, Node] = {}
+        for index, column in enumerate(own.columns):
             if column.role == "computed":
                 where = (*path, "columns", index, "formula")
-                try:
-                    nodes[column.key] = parser.parsed(column.formula, known[column.key])
-                except ExpressionError as error:
-                    raise self.place.error(where, str(error)) from None
-                self._formula_is_short(where, column, nodes[column.key])
-        for index, column in enumerate(sheet.columns):
+                trees[column.key] = self._parsed(parser, where, column.formula, known[column.key])
+                self._alternatives_are_inputs(where, sheet, trees[column.key])
+        for index, result in enumerate(sheet.results):
+            where = (*path, "results", index, "formula")
+            tree = trees[result.key] = self._parsed(parser, where, result.formula, result.unit)
+            for key in row_keys(tree):
+                if key in columns:
+                    raise self.place.error(where, f"{key!r} is a column; a result is one number")
+        for index, column in enumerate(own.columns):
             if column.role == "input" and column.key not in parser.used and column.required:
                 raise self.place.error(
                     (*path, "columns", index), f"{column.key!r} is required, but no formula uses it"
                 )
         self._charts_are_good(path, sheet, known)
-        ordered = self._ordered(path, sheet, nodes)
-        required = frozenset(_required(sheet, ordered))
+        formulas = {key: tree for key, tree in trees.items() if key in columns}
+        for column in own.columns:
+            if column.sigma is True:
+                (_, error) = _with_error(column)
+                trees[error.key] = Uncertainty(column.key, column.unit, formulas, sigmas)
+        ordered = self._ordered(path, own, trees)
+        nodes = {key: tree for key, tree in ordered.items() if key in columns}
+        self._formulas_are_short(path, own, nodes)
+        required = frozenset(_required(sheet, nodes))
         return Table(
             sheet,
-            ordered,
+            nodes,
             required,
-            tuple(self._problems(sheet, ordered, required)),
+            tuple(self._problems(sheet, nodes, required)),
             frozenset(parser.used),
+            {result.key: ordered[result.key] for result in sheet.results},
+            tuple(ordered),
         )
+
+    def _parsed(self, parser: Parser, path: tuple[int | str, ...], formula: str, unit: str) -> Node:
+        try:
+            return parser.parsed(formula, unit)
+        except ExpressionError as error:
+            raise self.place.error(path, str(error)) from None
+
+    def _sigmas(
+        self, path: tuple[int | str, ...], sheet: Sheet, known: Mapping[str, str]
+    ) -> Iterator[tuple[str, Node]]:
+        """Yield the error of each input that has one, in that input's unit."""
+        inputs = {column.key for column in sheet.columns if column.role == "input"}
+        for index, column in enumerate(sheet.columns):
+            where = (*path, "columns", index, "sigma")
+            if column.sigma is None or (column.role == "computed" and column.is_number):
+                if isinstance(column.sigma, str) or column.sigma is False:
+                    raise self.place.error(where, "a computed column's sigma is true, or left out")
+                continue
+            if column.role == "computed":
+                raise self.place.error(where, f"{column.key!r} is no number, which has an error")
+            others = inputs - {column.key}
+            if not isinstance(column.sigma, str) or column.sigma not in others:
+                near = near_matches(str(column.sigma), others)
+                raise self.place.error(
+                    where, f"{column.sigma!r} is not another input column ({near})"
+                )
+            unit = known[column.sigma]
+            if unit in (TEXT, TIME) or not column.is_number:
+                raise self.place.error(where, f"{column.key!r} and its error must be numbers")
+            try:
+                factor = units.factor(unit, column.unit)
+            except InputError as error:
+                raise self.place.error(where, str(error)) from None
+            sigma = Key(column.sigma, unit)
+            yield column.key, sigma if factor == 1 else Scaled(sigma, factor, column.unit)
+
+    def _result_units(
+        self, path: tuple[int | str, ...], sheet: Sheet, known: Mapping[str, str]
+    ) -> dict[str, str]:
+        found: dict[str, str] = {}
+        for index, result in enumerate(sheet.results):
+            where = (*path, "results", index)
+            taken = {**self.settings, **dict.fromkeys(self.results), **known}
+            self._key_is_good(where, result.key, {**dict.fromkeys(reserved_names()), **taken})
+            self._unit_is_good(where, result.unit)
+            self.results.add(result.key)
+            found[result.key] = result.unit
+        return found
+
+    def _summary(self, path: tuple[int | str, ...], sheet: Sheet, tables: list[Table]) -> Table:
+        """Return a sheet with a row for each group of rows of an earlier one."""
+        if not sheet.gathers or not sheet.by:
+            raise self.place.error(path, f"the sheet {sheet.name!r} needs both gathers and by")
+        gathered = next((each for each in tables if each.sheet.name == sheet.gathers), None)
+        if gathered is None:
+            near = near_matches(sheet.gathers, [each.sheet.name for each in tables])
+            raise self.place.error(
+                (*path, "gathers"), f"{sheet.gathers!r} is not an earlier sheet ({near})"
+            )
+        units_of = {
+            column.key: column.unit if column.is_number else _KINDS_UNIT[column.kind]
+            for column in gathered.sheet.columns
+        }
+        if units_of.get(sheet.by) != TEXT:
+            near = near_matches(sheet.by, [key for key, unit in units_of.items() if unit == TEXT])
+            raise self.place.error(
+                (*path, "by"),
+                f"{sheet.by!r} is not a column of texts of {sheet.gathers!r} ({near})",
+            )
+        parser = Parser({**self.settings, **units_of}, columns=frozenset(units_of))
+        nodes: dict[str, Node] = {}
+        for index, column in enumerate(sheet.columns):
+            where = (*path, "columns", index)
+            self._key_is_good(where, column.key, {**self.settings, **nodes})
+            self._unit_is_good(where, column.unit)
+            self._column_is_good(where, column)
+            if column.role == "input" or column.sigma is not None:
+                raise self.place.error(where, f"the sheet {sheet.name!r} has computed columns only")
+            unit = column.unit if column.is_number else _KINDS_UNIT[column.kind]
+            nodes[column.key] = self._parsed(parser, (*where, "formula"), column.formula, unit)
+        self._labels_differ(path, sheet, sheet)
+        self._charts_are_good(path, sheet, {key: tree.unit or "" for key, tree in nodes.items()})
+        return Table(sheet, nodes, frozenset(), (), frozenset(), {}, tuple(nodes), gathered)
 
     def _column_is_good(self, path: tuple[int | str, ...], column: Column) -> None:
         if column.role == "computed" and not column.formula:
@@ -456,25 +638,35 @@ class _Checker:
                     path, f"the limit {limit!r} and {column.key!r} are of different kinds"
                 )
 
-    def _labels_differ(self, path: tuple[int | str, ...], sheet: Sheet) -> None:
+    def _labels_differ(self, path: tuple[int | str, ...], own: Sheet, sheet: Sheet) -> None:
         taken: dict[str, str] = {}
+        places = [index for index, column in enumerate(own.columns) for _ in _with_error(column)]
         for index, column in enumerate(sheet.columns):
             for label in (column.label, *column.aliases):
                 folded = " ".join(label.split()).casefold()
                 if taken.setdefault(folded, column.key) != column.key:
                     raise self.place.error(
-                        (*path, "columns", index),
+                        (*path, "columns", places[index]),
                         f"{label!r} names both {taken[folded]!r} and {column.key!r}",
                     )
 
     def _charts_are_good(
         self, path: tuple[int | str, ...], sheet: Sheet, known: Mapping[str, str]
     ) -> None:
+        numbers = [each for each in known if known[each] not in (TEXT, TIME)]
+        for index, histogram in enumerate(sheet.histograms):
+            for word, key in (("of", histogram.of), ("where", histogram.where or histogram.of)):
+                if key not in numbers:
+                    raise self.place.error(
+                        (*path, "histograms", index, word),
+                        f"{key!r} is not a column of numbers of this sheet "
+                        f"({near_matches(key, numbers)})",
+                    )
         for index, chart in enumerate(sheet.charts):
             where = (*path, "charts", index)
             for axis, key in (("x", chart.x), *(("y", key) for key in chart.y)):
-                if known.get(key, TEXT) == TEXT:
-                    near = near_matches(key, [each for each in known if known[each] != TEXT])
+                if known.get(key, TEXT) in (TEXT, TIME):
+                    near = near_matches(key, numbers)
                     raise self.place.error(
                         (*where, axis), f"{key!r} is not a column of numbers of this sheet ({near})"
                     )
@@ -485,18 +677,50 @@ class _Checker:
                         f"{key!r} and {chart.y[0]!r} cannot share an axis: their units differ",
                     )
 
-    def _formula_is_short(self, path: tuple[int | str, ...], column: Column, tree: Node) -> None:
+    def _alternatives_are_inputs(
+        self, path: tuple[int | str, ...], sheet: Sheet, tree: Node
+    ) -> None:
+        computed = {column.key for column in sheet.columns if column.role == "computed"}
+        for part in tree.parts():
+            for key in part.awaited if isinstance(part, Either) else ():
+                if key.key in computed:
+                    raise self.place.error(
+                        path,
+                        f"{key.key!r} is computed; what stands before «or» must need inputs only",
+                    )
+
+    def _formulas_are_short(
+        self, path: tuple[int | str, ...], sheet: Sheet, nodes: Mapping[str, Node]
+    ) -> None:
+        places = {column.key: index for index, column in enumerate(sheet.columns)}
+        for key, tree in nodes.items():
+            where = (*path, "columns", places.get(key.removesuffix(ERROR_OF), 0), "formula")
+            self._formula_is_short(where, sheet, key, tree)
+
+    def _formula_is_short(
+        self, path: tuple[int | str, ...], sheet: Sheet, key: str, tree: Node
+    ) -> None:
         # the longest cell and setting names that a template can have stand in for the real ones
-        cells = Cells({key: name("$ZZ1048576") for key in _keys(tree)})
+        own, working = f"'{sheet.name}'!", f"'{working_title(sheet.name)}'!"
+        steps = Steps(
+            lambda _: f"{working}{LAST_CELL}",
+            lambda _: f"{working}{LAST_CELL}:$ZZ$1048576",
+            lambda cell: f"{own}{cell}" if cell == LAST_CELL else cell.removeprefix(working),
+        )
+        symbols = _LongestNames()
         try:
-            tree.of_cells(cells).formula(when_blank=None)
+            tree.of_cells(Cells(symbols)).mapped(steps.taken_out).formula(when_blank=None)
+            too_long = [each for each in steps.formulas if len(each) > LONGEST]
+            if too_long:
+                raise FormulaError(
+                    f"a working column's formula has {len(too_long[0])} characters, "
+                    f"{LONGEST} are allowed"
+                )
         except FormulaError as error:
-            raise self.place.error(path, f"{column.key!r}: {error}") from None
+            raise self.place.error(path, f"{key!r}: {error}") from None
         except RecursionError:
-            raise self.place.error(
-                path, f"{column.key!r}: the formula is nested too deep"
-            ) from None
-        except NotTraceable:
+            raise self.place.error(path, f"{key!r}: the formula is nested too deep") from None
+        except (NotTraceable, InputError):
             return
 
     def _ordered(
@@ -511,10 +735,16 @@ class _Checker:
                 if not any(used in waiting for used in _keys(tree))
             ]
             if not ready:
-                key = next(iter(waiting))
-                index = [column.key for column in sheet.columns].index(key)
+                first = next(iter(waiting))
+                rows = [column.key for column in sheet.columns]
+                results = [result.key for result in sheet.results]
+                where = (
+                    ("columns", rows.index(first))
+                    if first in rows
+                    else ("results", results.index(first))
+                )
                 raise self.place.error(
-                    (*path, "columns", index, "formula"),
+                    (*path, *where, "formula"),
                     f"the formulas of {' and '.join(map(repr, waiting))} lead back to themselves",
                 )
             for key in ready:
@@ -531,10 +761,16 @@ class _Checker:
         for column in inputs:
             if column.key in required:
                 yield Problem(column, "missing", f"{column.label} is missing")
+        for keys in _alternatives(nodes.values(), {column.key for column in inputs}):
+            columns = [column for column in inputs if any(column.key in group for group in keys)]
+            labels = " or ".join(column.label for column in columns)
+            yield Problem(columns[0], "missing", f"{labels} is missing", alternatives=keys)
         for column in inputs:
             if column.is_number:
                 yield Problem(column, "not a number", f"{column.label} is not a number")
-                for comparison, limit in _tightest([*_domain(column, nodes), *column.limits()]):
+                of_errors = [(">=", 0.0) for each in inputs if each.sigma == column.key]
+                limits = [*_domain(column, nodes), *column.limits(), *of_errors]
+                for comparison, limit in _tightest(limits):
                     words = (
                         f"{limit:.10g} {column.unit}".strip()
                         if not isinstance(limit, str)
@@ -553,6 +789,12 @@ class _Checker:
             elif column.choices:
                 allowed = " or ".join(column.choices)
                 yield Problem(column, "not a choice", f"{column.label} must be {allowed}")
+            elif column.kind == "time":
+                yield Problem(
+                    column,
+                    "not a time",
+                    f"{column.label} must be a date and time, as 2026-12-24 03:30:15",
+                )
             elif column.kind == "line":
                 yield Problem(
                     column,
@@ -560,10 +802,42 @@ class _Checker:
                     f"{column.label}: no such name, or one of several lines; "
                     "see the sheet Line names",
                 )
+        for column in sheet.columns:
+            if column.role == "computed":
+                for comparison, limit in column.limits():
+                    words = (
+                        f"{limit:.10g} {column.unit}"
+                        if not isinstance(limit, str)
+                        else (f"the setting «{self.labels[limit]}»")
+                    )
+                    yield Problem(
+                        column,
+                        "beyond",
+                        f"{column.label} is {_BROKEN[comparison]} {words}".strip(),
+                        comparison,
+                        limit,
+                        units.factor(self.settings[limit], column.unit)
+                        if isinstance(limit, str)
+                        else 1.0,
+                    )
 
 
 def _keys(tree: Node) -> list[str]:
     return [part.key for part in tree.parts() if isinstance(part, Key)]
+
+
+def _alternatives(nodes: Iterable[Node], inputs: Set[str]) -> Iterator[tuple[tuple[str, ...], ...]]:
+    """Yield the groups of inputs of which a row needs one, each once."""
+    seen: set[tuple[tuple[str, ...], ...]] = set()
+    for tree in nodes:
+        for part in tree.parts():
+            if isinstance(part, Either):
+                keys = tuple(
+                    tuple(key for key in group if key in inputs) for group in part.alternatives
+                )
+                if all(keys) and keys not in seen:
+                    seen.add(keys)
+                    yield keys
 
 
 def plain_key(part: Node | None) -> str | None:
@@ -575,23 +849,16 @@ def plain_key(part: Node | None) -> str | None:
 
 def _required(sheet: Sheet, nodes: Mapping[str, Node]) -> Iterator[str]:
     """Yield the inputs without which some computed column stays empty."""
-    optional: set[str] = set()
-    needed: set[str] = set()
-    for tree in nodes.values():
-        for argument, given in given_arguments([tree]):
-            key = plain_key(given)
-            if key is not None:
-                (optional if argument.optional else needed).add(key)
-        bare = set(_keys(tree)) - optional
-        needed |= bare
+    wanted_by = {part.key for tree in nodes.values() for part in needed(tree)}
     for column in sheet.columns:
         if column.role == "input":
-            wanted = column.key in needed if column.required is None else column.required
+            wanted = column.key in wanted_by if column.required is None else column.required
             if wanted:
                 yield column.key
 
 
 _WORDS = {">": "above", ">=": "at least", "<": "below", "<=": "at most"}
+_BROKEN = {">": "not above", ">=": "below", "<": "not below", "<=": "above"}
 
 
 def _tightest(
@@ -617,6 +884,53 @@ def _domain(column: Column, nodes: Mapping[str, Node]) -> Iterator[tuple[str, fl
             factor = given.factor if isinstance(given, Scaled) else 1.0
             for comparison, limit in argument.limits():
                 yield comparison, float(f"{limit / factor:.12g}")
+
+
+ERROR_OF: Final = "_sigma"
+"""What is added to a computed column's key for that of its ± column"""
+
+
+def _with_error(column: Column) -> tuple[Column, ...]:
+    """Return a column, and its ± column after it where it has one."""
+    if column.role != "computed" or column.sigma is not True:
+        return (column,)
+    error = Column(
+        key=f"{column.key}{ERROR_OF}",
+        label=f"± {column.label}",
+        role="computed",
+        unit=column.unit,
+        format=column.format.partition(";")[0].removeprefix("+"),
+        width=column.width,
+        ucd=f"stat.error;{column.ucd}" if column.ucd else "",
+        note=f"1-σ error of {column.label}, from the errors of what was typed, first order.",
+        aliases=(f"{column.label} error", f"Error of {column.label}"),
+    )
+    return column, error
+
+
+LAST_CELL: Final = "$ZZ1048576"
+
+
+class _LongestNames(dict[str, Expr]):
+    """The longest name that a key may have in a template."""
+
+    def __missing__(self, key: str) -> Expr:
+        found = self[key] = name(key if len(key) > len(LAST_CELL) else LAST_CELL)
+        return found
+
+
+def working_title(title: str) -> str:
+    """Return the name of the sheet with a sheet's working columns."""
+    return f"{title[:23]} working"
+
+
+def season_wanted(recipe: Recipe) -> bool:
+    """Tell whether a formula follows the Earth."""
+    return any(
+        isinstance(argument, Moment)
+        for table in recipe.tables
+        for argument, _ in given_arguments(table.nodes.values())
+    )
 
 
 def lines_wanted(recipe: Recipe) -> bool:

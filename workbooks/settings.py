@@ -4,6 +4,7 @@ from dataclasses import dataclass
 from typing import Final
 
 from cellfuncs.bridges.formula import HIDDEN_TABLES, derived_settings
+from cellfuncs.physics.earth import SEASON_TABLE
 from cellfuncs.physics.expansion import PARAMETERS
 from workbooks.expression import COSMOLOGY_RANGE
 
@@ -65,6 +66,7 @@ def reserved_names() -> set[str]:
         | own
         | published
         | set(HIDDEN_TABLES)
+        | {f"season_{column}" for column in SEASON_TABLE}
         | set(derived_settings())
     )
 

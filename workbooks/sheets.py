@@ -7,6 +7,7 @@ from openpyxl import Workbook
 from openpyxl.styles import Alignment, Border, Font, PatternFill, Side
 from openpyxl.utils import get_column_letter
 from openpyxl.workbook.defined_name import DefinedName
+from openpyxl.worksheet.page import PageMargins
 from openpyxl.worksheet.properties import PageSetupProperties
 from openpyxl.worksheet.worksheet import Worksheet
 
@@ -50,6 +51,7 @@ class Book:
         sheet.page_setup.paperSize = 9
         sheet.page_setup.fitToWidth = 1
         sheet.page_setup.fitToHeight = 0
+        sheet.page_margins = PageMargins(left=0.3, right=0.3, top=0.4, bottom=0.4)
         sheet.sheet_properties.pageSetUpPr = PageSetupProperties(fitToPage=True)
         return sheet
 

@@ -10,14 +10,17 @@ from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.worksheet import Worksheet
 
 from cellfuncs.bridges.formula import HIDDEN_TABLES, all_of, any_of, derived_settings, text_of
+from cellfuncs.catalogue import Function
 from cellfuncs.constants import EDITION
 from cellfuncs.errors import DomainError
 from cellfuncs.families.workbook import provenance
 from cellfuncs.physics import lines, refraction
 from cellfuncs.physics.expansion import PARAMETERS, PUBLISHED, published
 from cellfuncs.symbols import Expr, name, node
-from workbooks.expression import COSMOLOGY_RANGE, Call
-from workbooks.recipe import Column, Recipe, Setting, Table, lines_wanted
+from workbooks.expression import COSMOLOGY_RANGE, Call, Key, Node
+from workbooks.gathered import Gathered
+from workbooks.recipe import Column, Recipe, ResultCell, Setting, Table, lines_wanted
+from workbooks.season import Season
 from workbooks.settings import COSMOLOGY_CELLS, OWN, SET_CELL, CosmologyCell
 from workbooks.sheets import (
     BOLD,
@@ -46,7 +49,7 @@ _DERIVED: Final = {
 }
 
 
-def settings_sheet(book: Book, recipe: Recipe) -> None:
+def settings_sheet(book: Book, recipe: Recipe, season: Season | None) -> None:
     sheet = book.sheet("Settings")
     put(sheet, "A1", "Settings", TITLE)
     put(sheet, "A2", "Type in the framed white cells.", QUIET)
@@ -61,6 +64,16 @@ def settings_sheet(book: Book, recipe: Recipe) -> None:
         for offset, setting in enumerate(settings, 1):
             _setting(book, sheet, row + offset, setting)
         row += len(settings) + 2
+    if season:
+        put_heading(sheet, row, ("Dates", "In this workbook", "", "", "Note"))
+        note = "the formulas know the Earth's motion from here"
+        for words, day in (("First date", season.first), ("Last date", season.last)):
+            row += 1
+            put(sheet, f"A{row}", words, PLAIN)
+            put_result(sheet, f"B{row}", day.isoformat(), "@")
+            put(sheet, f"E{row}", note, QUIET)
+            note = "to here; make a new template for later nights, or use «cellfuncs fill»"
+        row += 3
     if recipe.text.cosmology:
         _cosmology(book, recipe, sheet, row)
 
@@ -70,6 +83,12 @@ def _setting(book: Book, sheet: Worksheet, row: int, setting: Setting) -> None:
     put_input(sheet, f"B{row}", setting.value, setting.format)
     put(sheet, f"C{row}", setting.unit, PLAIN)
     put(sheet, f"E{row}", setting.note, QUIET)
+    if setting.choices:
+        rule = DataValidation("list", formula1=f'"{",".join(setting.choices)}"')
+        rule.showErrorMessage, rule.errorTitle = True, setting.label[:32]
+        rule.error = f"{setting.label} must be {' or '.join(setting.choices)}."[:225]
+        rule.add(f"B{row}")
+        sheet.add_data_validation(rule)
     book.name(setting.key, sheet, f"$B${row}")
 
 
@@ -126,6 +145,28 @@ def _parameter(
     put(sheet, f"E{row}", _note(cell), QUIET)
 
 
+def results_sheet(book: Book, recipe: Recipe, table: Table, formulas: Mapping[str, str]) -> None:
+    """Add the sheet with what follows from a table's columns as a whole."""
+    sheet = book.sheet(results_title(recipe, table))
+    put(sheet, "A1", recipe.text.title, TITLE)
+    put(sheet, "A2", f"From all rows of the sheet {table.sheet.name}.", QUIET)
+    for letter, width in zip("ABCD", (44, 18, 18, 90), strict=True):
+        sheet.column_dimensions[letter].width = width
+    put_heading(sheet, 4, ("Result", "Value", "Unit", "Note"))
+    for row, result in enumerate(table.sheet.results, 5):
+        put(sheet, f"A{row}", result.label, PLAIN)
+        put_result(sheet, f"B{row}", formulas.get(result.key, ""), result.format or "General")
+        put(sheet, f"C{row}", result.unit, PLAIN)
+        put(sheet, f"D{row}", result.note, QUIET)
+        sheet.row_dimensions[row].hidden = result.hidden
+        book.name(result.key, sheet, f"$B${row}")
+
+
+def results_title(recipe: Recipe, table: Table) -> str:
+    several = sum(bool(each.results) for each in recipe.tables) > 1
+    return f"{table.sheet.name[:23]} results" if several else "Results"
+
+
 def line_sheet(book: Book) -> None:
     sheet = book.sheet("Line names")
     put(sheet, "A1", "Line names", TITLE)
@@ -178,9 +219,18 @@ def how_to_sheet(book: Book, recipe: Recipe, needs: str) -> None:
         sheet.merge_cells(f"B{row}:C{row}")
         sheet.row_dimensions[row].height = 16 * (1 + len(step) // 110)
         row += 1
-    for table in recipe.tables:
+    for caution in cautions(recipe):
+        put(sheet, f"A{row}", "Caution", BOLD).alignment = WRAPPED
+        put(sheet, f"B{row}", caution, BOLD).alignment = WRAPPED
+        sheet.merge_cells(f"B{row}:C{row}")
+        sheet.row_dimensions[row].height = 16 * (1 + len(caution) // 100)
+        row += 1
+    for table in (*recipe.tables, *recipe.summaries):
         row += 1
         for role, columns in (("type here", table.inputs), ("computed", table.computed)):
+            columns = [column for column in columns if not column.hidden]
+            if not columns:
+                continue
             put_heading(sheet, row, (f"{table.sheet.name}: {role}", "Unit", "What it is"))
             for column in columns:
                 row += 1
@@ -189,6 +239,23 @@ def how_to_sheet(book: Book, recipe: Recipe, needs: str) -> None:
                 put(sheet, f"C{row}", _explained(table, column), PLAIN).alignment = WRAPPED
                 sheet.row_dimensions[row].height = 16 * (1 + len(_explained(table, column)) // 95)
             row += 2
+        results = [result for result in table.sheet.results if not result.hidden]
+        if results:
+            put_heading(sheet, row, (results_title(recipe, table), "Unit", "What it is"))
+            for result in results:
+                row += 1
+                put(sheet, f"A{row}", result.label, PLAIN).alignment = WRAPPED
+                put(sheet, f"B{row}", result.unit, PLAIN).alignment = WRAPPED
+                words = _result_explained(table, result)
+                put(sheet, f"C{row}", words, PLAIN).alignment = WRAPPED
+                sheet.row_dimensions[row].height = 16 * (1 + len(words) // 95)
+            row += 2
+
+
+def _result_explained(table: Table, result: ResultCell) -> str:
+    called = [made.summary for made in called_by(table.results[result.key])]
+    words = result.note or (called[0] if called else result.formula)
+    return f"{words[:1].upper()}{words[1:]}".removesuffix(".") + "."
 
 
 def provenance_sheet(book: Book, recipe: Recipe, made: datetime) -> None:
@@ -210,8 +277,9 @@ def provenance_sheet(book: Book, recipe: Recipe, made: datetime) -> None:
         ("Last filled", "last_filled", None),
     ]
     for row, (label, key, value) in enumerate(rows, 3):
-        put(sheet, f"A{row}", label, BOLD)
-        put(sheet, f"B{row}", value, PLAIN)
+        put(sheet, f"A{row}", label, BOLD).alignment = WRAPPED
+        put(sheet, f"B{row}", value, PLAIN).alignment = WRAPPED
+        sheet.row_dimensions[row].height = 16 * (1 + len(str(value or "")) // 95)
         book.name(key, sheet, f"$B${row}")
     row = len(rows) + 4
     if recipe.text.cosmology:
@@ -222,11 +290,21 @@ def provenance_sheet(book: Book, recipe: Recipe, made: datetime) -> None:
             put(sheet, f"B{row}", source, PLAIN)
         row += 2
     put_heading(sheet, row, ("Computed column", "Function and source"))
-    for table in recipe.tables:
+    for table in (*recipe.tables, *recipe.summaries):
         for column in table.computed:
-            row += 1
-            put(sheet, f"A{row}", column.header, PLAIN)
-            put(sheet, f"B{row}", "; ".join(_sources(table, column)), PLAIN)
+            sources = _sources(table, column)
+            if sources and not column.hidden:
+                row += 1
+                of = f"{table.sheet.name}: " if table.gathers else ""
+                put(sheet, f"A{row}", f"{of}{column.header}", PLAIN)
+                put(sheet, f"B{row}", "; ".join(sources), PLAIN)
+        for result in (each for each in table.sheet.results if not each.hidden):
+            called = called_by(table.results[result.key])
+            sources = list(dict.fromkeys(f"{made.name}: {made.source}" for made in called))
+            if sources:
+                row += 1
+                put(sheet, f"A{row}", result.label, PLAIN)
+                put(sheet, f"B{row}", "; ".join(sources), PLAIN)
 
 
 def hidden_tables(book: Book, recipe: Recipe) -> None:
@@ -320,15 +398,39 @@ def _note(cell: CosmologyCell) -> str:
     return f"own value left empty: {parameter.default:g}"
 
 
+def cautions(recipe: Recipe) -> list[str]:
+    """Return what must be said where the functions of a recipe are offered, with the columns."""
+    columns: dict[str, list[str]] = {}
+    for table in recipe.tables:
+        for column in table.computed:
+            for caution in _cautions(table, column):
+                columns.setdefault(caution, []).append(column.label)
+    return [f"{', '.join(labels)}: {caution}" for caution, labels in columns.items()]
+
+
+def _cautions(table: Table, column: Column) -> list[str]:
+    called = called_by(table.nodes[column.key])
+    return list(dict.fromkeys(made.caution for made in called if made.caution))
+
+
+def called_by(tree: Node) -> list[Function]:
+    """Return the functions that a formula calls."""
+    return [part.function for part in tree.parts() if isinstance(part, (Call, Gathered))]
+
+
 def _sources(table: Table, column: Column) -> list[str]:
-    called = [part.function for part in table.nodes[column.key].parts() if isinstance(part, Call)]
+    called = called_by(table.nodes[column.key])
+    if table.gathers:
+        # a row of a group shows what columns of the other sheet hold
+        keys = [part.key for part in table.nodes[column.key].parts() if isinstance(part, Key)]
+        nodes = table.gathers.nodes
+        called += [made for key in keys if key in nodes for made in called_by(nodes[key])]
     return list(dict.fromkeys(f"{made.name}: {made.source}" for made in called))
 
 
 def _explained(table: Table, column: Column) -> str:
     if column.role == "input":
         return column.note
-    called = [
-        part.function.summary for part in table.nodes[column.key].parts() if isinstance(part, Call)
-    ]
-    return column.note or (called[0] if called else column.formula)
+    called = [made.summary for made in called_by(table.nodes[column.key])]
+    meaning = column.note or (called[0] if called else column.formula)
+    return " ".join((meaning, *_cautions(table, column)))

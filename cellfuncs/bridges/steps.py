@@ -116,9 +116,7 @@ class Steps:
             if each.operation in _LEAVES:
                 return each
             if id(each) not in done:
-                parts = [
-                    apart(part) if isinstance(part, Expr) else part for part in each.arguments
-                ]
+                parts = [apart(part) if isinstance(part, Expr) else part for part in each.arguments]
                 rebuilt = Expr(each.operation, *parts)
                 again = mentions[id(each)] > 1 and leaves(rebuilt) > LEAST_SHARED
                 is_sum = each.operation == "SUMPRODUCT"

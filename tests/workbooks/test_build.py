@@ -5,7 +5,6 @@ VOUnit parser reads the units of the headers; the .xlsx package is looked at as 
 What the functions themselves are worth, tests/published/ holds to the literature.
 """
 
-import io
 import re
 import subprocess
 import warnings
@@ -23,7 +22,7 @@ from astropy.units import Unit
 from lxml import etree
 from openpyxl.workbook import Workbook
 from openpyxl.worksheet.worksheet import Worksheet
-from recalculate import ENGINES, ErrorCell, Sheets, recalculated
+from recalculate import ENGINES, ErrorCell, Sheets, recalculated, save
 
 import cellfuncs as cf
 from cellfuncs.errors import CellError
@@ -283,19 +282,6 @@ def own_cell(workbook: Workbook, word: str) -> Any:
     return sheet.cell(in_use.row, heading.column)
 
 
-def save(workbook: Workbook, path: Path) -> Path:
-    """Save as spreadsheet programs do: openpyxl calls an empty cell a number, for IronCalc 0"""
-    packed = io.BytesIO()
-    workbook.save(packed)
-    with zipfile.ZipFile(packed) as old, zipfile.ZipFile(path, "w", zipfile.ZIP_DEFLATED) as new:
-        for part in old.namelist():
-            content = old.read(part)
-            if part.startswith("xl/worksheets/sheet"):
-                content = re.sub(rb'(<c r="\w+" s="\d+") t="n"(?: ?/>|></c>)', rb"\1/>", content)
-            new.writestr(part, content)
-    return path
-
-
 @pytest.fixture(scope="module")
 def templates(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Path]:
     folder = tmp_path_factory.mktemp("templates")
@@ -356,7 +342,10 @@ def column_letters(path: Path, sheet: str) -> dict[str, str]:
 
 
 def test_every_built_in_recipe_is_held_to_the_functions() -> None:
-    assert built_in() == sorted(EXPECTED)
+    # test_velocity_night.py holds the one whose columns need a tolerance of their own,
+    # test_sample_recipes.py those with results of whole columns
+    sampled = {"spectrum-summary", "cluster-members", "hubble-diagram"}
+    assert set(built_in()) == {*EXPECTED, *sampled, "velocity-night"}
     for recipe_name, columns in EXPECTED.items():
         (table,) = load(recipe_name).tables
         assert [column.header for column in table.computed] == list(columns)

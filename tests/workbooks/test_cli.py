@@ -157,7 +157,9 @@ def test_an_output_that_exists_is_refused_with_2(night: Path) -> None:
         ("fill",),
         ("fill", "night.xlsx"),
         ("fill", "gone.xlsx", "-r", "own.toml"),
-        ("fill", ".", "-r", "own.toml"),
+        ("fill", "empty", "-r", "own.toml"),
+        ("fill", "*.ods", "-r", "own.toml"),
+        ("fill", "night.xlsx", "-r", "own.toml", "-o", "night.ods"),
         ("fill", "night.xlsx", "-r", "gone.toml"),
         ("fill", "night.xlsx", "-r", "line-logg"),
         ("fill", "night.xlsx", "-r", "distance-sheet"),
@@ -175,6 +177,7 @@ def test_an_output_that_exists_is_refused_with_2(night: Path) -> None:
     ],
 )
 def test_a_wrong_call_gets_one_sentence_and_2(night: Path, arguments: tuple[str, ...]) -> None:
+    (night / "empty").mkdir()
     before = sorted(night.iterdir())
     ran = run(night, *arguments)
     assert ran.returncode == 2

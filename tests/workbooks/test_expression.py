@@ -21,7 +21,8 @@ import cellfuncs as cf
 from cellfuncs.errors import CellError, DomainError, InputError, MissingInput
 from cellfuncs.physics.expansion import cosmology_from
 from cellfuncs.symbols import name
-from workbooks.expression import TEXT, Cells, Columns, ExpressionError, Node, Parser, Row
+from workbooks.expression import TEXT, Cells, Columns, Node, Row
+from workbooks.parsing import ExpressionError, Parser
 
 KNOWN = {
     "length_nm": "nm",

@@ -31,16 +31,10 @@ sys.path.insert(0, str(Path(__file__).parent))
 
 from everything import MAIN, NIGHT_PART, write_everything
 
+from workbooks.cells import ErrorValue, LogbookError, Value, cell_name, column_number
 from workbooks.logbook import Logbook
-from workbooks.package import (
-    ErrorValue,
-    LogbookError,
-    Package,
-    SheetPart,
-    Value,
-    cell_name,
-    column_number,
-)
+from workbooks.package import Package
+from workbooks.worksheet import SheetPart
 
 NIGHT = "Night 1"
 

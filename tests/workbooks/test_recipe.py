@@ -484,3 +484,261 @@ def test_a_recipe_is_loaded_from_a_file(tmp_path: Path) -> None:
         load(str(path))
     where = line_of(SOUND, 'unit = "Angstrom"')
     assert str(caught.value).startswith(f"{path}, line {where}: ")
+
+
+# Errors, results, groups and histograms -----------------------------------------------------------
+
+SAMPLED = """\
+title = "Means"
+purpose = "One row a line."
+
+[[settings]]
+key = "medium"
+label = "Medium"
+group = "Instrument"
+kind = "text"
+value = "air"
+choices = ["vacuum", "air"]
+
+[[sheets]]
+name = "Lines"
+rows = 10
+
+[[sheets.columns]]
+key = "spectrum"
+label = "Spectrum"
+role = "input"
+kind = "text"
+
+[[sheets.columns]]
+key = "line"
+label = "Line"
+role = "input"
+kind = "line"
+
+[[sheets.columns]]
+key = "wavelength"
+label = "Wavelength"
+unit = "Angstrom"
+role = "input"
+sigma = "error"
+
+[[sheets.columns]]
+key = "error"
+label = "Error"
+unit = "nm"
+role = "input"
+
+[[sheets.columns]]
+key = "guess"
+label = "Guess"
+role = "computed"
+kind = "text"
+formula = "line_nearest(wavelength, 0, medium)"
+
+[[sheets.columns]]
+key = "redshift"
+label = "Redshift"
+role = "computed"
+sigma = true
+formula = "redshift_from_line(wavelength, line or guess, medium)"
+
+[[sheets.columns]]
+key = "good"
+label = "Good"
+role = "computed"
+formula = "membership(redshift, all_mean, 0.1)"
+
+[[sheets.columns]]
+key = "mean"
+label = "Mean"
+role = "computed"
+formula = "mean_weighted(redshift, redshift_sigma, by=spectrum, where=good)"
+
+[[sheets.results]]
+key = "all_mean"
+label = "Mean of all"
+formula = "mean_weighted(redshift, redshift_sigma)"
+
+[[sheets.histograms]]
+title = "Redshifts"
+of = "redshift"
+where = "good"
+bins = 5
+
+[[sheets]]
+name = "Spectra"
+rows = 4
+gathers = "Lines"
+by = "spectrum"
+
+[[sheets.columns]]
+key = "name"
+label = "Spectrum"
+role = "computed"
+kind = "text"
+formula = "spectrum"
+
+[[sheets.columns]]
+key = "z"
+label = "Redshift"
+role = "computed"
+formula = "mean"
+"""
+
+
+def test_the_recipe_with_samples_is_read() -> None:
+    recipe = read(SAMPLED.encode(), "means.toml", "means")
+    (table,), (summary,) = recipe.tables, recipe.summaries
+    assert [*table.nodes] == ["guess", "redshift", "redshift_sigma", "good", "mean"]
+    assert [*table.results] == ["all_mean"]
+    assert table.order.index("all_mean") < table.order.index("good")
+    assert summary.gathers is table
+    # beside its column, in the same unit
+    labels = [column.label for column in table.sheet.columns]
+    assert labels[labels.index("Redshift") + 1] == "± Redshift"
+
+
+# What is changed, into what, the line that is named, and what the sentence says.
+SAMPLED_MISTAKES: dict[str, tuple[str, str, str, list[str]]] = {
+    "sigma names no input": (
+        'sigma = "error"', 'sigma = "eror"', "eror", ["eror", "error", "input"],
+    ),
+    "sigma names a computed column": (
+        'sigma = "error"', 'sigma = "redshift"', 'sigma = "redshift"', ["redshift", "input"],
+    ),
+    "sigma names a text": ('sigma = "error"', 'sigma = "line"', 'sigma = "line"', ["number"]),
+    "sigma names itself": (
+        'sigma = "error"', 'sigma = "wavelength"', 'sigma = "wavelength"', ["wavelength"],
+    ),
+    "sigma of another kind": ('unit = "nm"', 'unit = "km/s"', 'sigma = "error"', ["km"]),
+    "sigma of an input is true": (
+        'sigma = "error"', "sigma = true", 'sigma = true\n\n[[sheets.columns]]\nkey = "error"',
+        ["input"],
+    ),
+    "sigma of a computed column is named": (
+        "sigma = true", 'sigma = "error"\n', 'sigma = "error"\n\nformula', ["true"],
+    ),
+    "sigma of a text": (
+        'kind = "text"\nformula = "line_nearest',
+        'kind = "text"\nsigma = true\nformula = "line_nearest',
+        "sigma = true\nformula = \"line_nearest", ["guess"],
+    ),
+    "sigma is a number": ("sigma = true", "sigma = 1", "sigma = 1", ["sigma"]),
+    "by names a number": ("by=spectrum", "by=wavelength", "by=wavelength", ["by=", "texts"]),
+    "by names a setting": ("by=spectrum", "by=medium", "by=medium", ["by=", "column"]),
+    "by names nothing": ("by=spectrum", "by=spectra", "by=spectra", ["spectra", "spectrum"]),
+    "by is a text": ("by=spectrum", "by='a'", "by='a'", ["by=", "column"]),
+    "by of a function without samples": (
+        "membership(redshift, all_mean, 0.1)", "membership(redshift, all_mean, 0.1, by=spectrum)",
+        "0.1, by=", ["MEMBERSHIP", "by"],
+    ),
+    "where names a text": ("where=good", "where=line", "where=line", ["where=", "numbers"]),
+    "where names a number with a unit": (
+        "where=good", "where=wavelength", "where=wavelength", ["where=", "without a unit"],
+    ),
+    "a result of a row": (
+        "mean_weighted(redshift, redshift_sigma)", "redshift * 2", "redshift * 2",
+        ["redshift", "column", "one number"],
+    ),
+    "a result by groups": (
+        "mean_weighted(redshift, redshift_sigma)",
+        "mean_weighted(redshift, redshift_sigma, by=spectrum)",
+        'sigma, by=spectrum)"', ["spectrum", "column", "one number"],
+    ),
+    "a result named as a column": ('key = "all_mean"', 'key = "good"', 'label = "Mean of all"',
+        ["good", "taken"]),
+    "a result of another kind": (
+        'label = "Mean of all"', 'label = "Mean of all"\nunit = "km/s"', "membership(redshift",
+        ["km/s"],
+    ),
+    "samples of two kinds": (
+        "redshift_sigma, by", "wavelength, by", "wavelength, by", ["Angstrom"],
+    ),
+    "a sample that is an expression": (
+        "(redshift, redshift_sigma, by", "(redshift + 1, redshift_sigma, by", "redshift + 1",
+        ["values of MEAN_WEIGHTED", "column"],
+    ),
+    "a sample of texts": (
+        "(redshift, redshift_sigma, by", "(line, redshift_sigma, by", "(line, redshift_sigma",
+        ["number"],
+    ),
+    "part from a column": (
+        "redshift_sigma, by", "redshift_sigma, line, by", "redshift_sigma, line", ["part"],
+    ),
+    "part from a setting": (
+        "redshift_sigma, by", "redshift_sigma, medium, by", "redshift_sigma, medium",
+        ["part", "written"],
+    ),
+    "no such part": (
+        "redshift_sigma, by", "redshift_sigma, 'meen', by", "meen", ["meen", "mean"],
+    ),
+    "or before a computed column": (
+        "line or guess", "guess or line", "guess or line", ["guess", "computed", "or"],
+    ),
+    "or after nothing that can be empty": (
+        "line or guess", "'H alpha' or guess", "'H alpha' or", ["or", "empty"],
+    ),
+    "or between kinds": (
+        "line or guess", "line or wavelength", "line or wavelength", ["text"],
+    ),
+    "and": ("line or guess", "line and guess", "line and guess", ["not allowed"]),
+    "gathers no sheet": (
+        'gathers = "Lines"', 'gathers = "Line"', 'gathers = "Line"', ["Line", "Lines"],
+    ),
+    "gathers itself": (
+        'gathers = "Lines"', 'gathers = "Spectra"', 'gathers = "Spectra"', ["Spectra"],
+    ),
+    "gathers by no column": (
+        'by = "spectrum"', 'by = "spectra"', 'by = "spectra"', ["spectra", "spectrum"],
+    ),
+    "gathers by a number": (
+        'by = "spectrum"', 'by = "redshift"', 'by = "redshift"', ["redshift", "text"],
+    ),
+    "gathers without by": ('by = "spectrum"\n', "", 'name = "Spectra"', ["by"]),
+    "by without gathers": ('gathers = "Lines"\n', "", 'name = "Spectra"', ["gathers"]),
+    "a summary with something to type": (
+        'role = "computed"\nkind = "text"\nformula = "spectrum"', 'role = "input"\nkind = "text"',
+        'key = "name"', ["Spectra", "computed"],
+    ),
+    "a summary of a key that is not there": (
+        'formula = "mean"', 'formula = "maen"', "maen", ["maen", "mean"],
+    ),
+    "histogram of nothing": (
+        'of = "redshift"', 'of = "redshft"', "redshft", ["redshft", "redshift"],
+    ),
+    "histogram of a text": ('of = "redshift"', 'of = "line"', 'of = "line"', ["line"]),
+    "histogram where nothing": (
+        'where = "good"', 'where = "god"', 'where = "god"', ["god", "good"],
+    ),
+    "histogram without bins": ("bins = 5", "bins = 1", "bins = 1", ["bins"]),
+    "histogram with half a bin": ("bins = 5", "bins = 5.5", "bins = 5.5", ["bins"]),
+    "key of a histogram": ("bins = 5", "bin = 5", "bin = 5", ["bin", "bins"]),
+    "key of a result": (
+        'label = "Mean of all"', 'label = "Mean of all"\nlable = "M"', "lable", ["lable", "label"],
+    ),
+    "round in a circle by a result": (
+        "mean_weighted(redshift, redshift_sigma)",
+        "mean_weighted(redshift, redshift_sigma, where=good)",
+        "membership(redshift", ["good", "all_mean", "back to"],
+    ),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("what", SAMPLED_MISTAKES)
+def test_a_mistake_with_samples_is_told_with_its_line(what: str) -> None:
+    old, new, part, words = SAMPLED_MISTAKES[what]
+    assert SAMPLED.count(old) == 1, old
+    text = SAMPLED.replace(old, new)
+    with pytest.raises(RecipeError) as caught:
+        read(text.encode(), "means.toml", "means")
+    file, _, rest = str(caught.value).partition(", line ")
+    number, _, said = rest.partition(": ")
+    assert file == "means.toml"
+    for word in words:
+        assert word in said
+    # the line itself, or the head of the part of the file in which it stands
+    wanted = line_of(text, part)
+    head = text.split("\n")[:wanted]
+    first = max(at for at, line in enumerate(head, 1) if line.startswith("[["))
+    assert first <= int(number) <= wanted
