@@ -10,8 +10,10 @@ from typing import Annotated
 import typer
 
 from cellfuncs.errors import CellError
+from workbooks.check_command import check
 from workbooks.connect import connect_calc
 from workbooks.connect_excel import connect_excel
+from workbooks.export_command import export
 from workbooks.fill_command import fill
 from workbooks.functions import functions
 from workbooks.logbook import LogbookError
@@ -99,6 +101,8 @@ def template(
 app.command()(fill)
 
 
+app.command()(check)
+app.command()(export)
 app.command()(functions)
 connect = typer.Typer(no_args_is_help=True, help="Connect the functions to a spreadsheet program.")
 app.add_typer(connect, name="connect")
