@@ -168,8 +168,8 @@ class _PlainRows:
         # What nearly every cell holds comes first: it halves the time.
         number = rb"><%bv>[^<]*</%bv></%bc>" % (name, name, name)
         text = rb"><%bis><%bt(?: xml:space=\"preserve\")?>[^<]*</%bt></%bis></%bc>" % ((name,) * 5)
-        # Each alternative shuts out the others, or a row that does not fit in the end would be tried
-        # in all the ways in which its cells can be taken.
+        # Each alternative shuts out the others: a row that does not fit in the end would else be
+        # tried in all the ways in which its cells can be taken.
         common = number + rb"|" + text
         held = rb"(?:" + common + rb"|(?!" + common + rb")" + any_held + rb")"
         self._cell = rb"\s*<%bc r=\"%%b\1\"%b" % (name, attributes)
