@@ -283,10 +283,7 @@ def list_text() -> str:
     parts = []
     for family, group in in_reading_order().items():
         lines = [f"{family}: {family_summary(group)}"]
-        for made in group:
-            lines.append(f"  {made.name:{room}}{made.summary}")
-            if made.caution:
-                lines.append(_wrapped(made.caution, " " * (2 + room), 2 + room))
+        lines += [f"  {made.name:{room}}{made.summary} {made.caution}".rstrip() for made in group]
         parts.append("\n".join(lines))
     return "\n\n".join(parts)
 

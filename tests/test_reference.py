@@ -237,7 +237,7 @@ def test_the_list_names_every_function_once_with_its_summary() -> None:
     lines = reference.list_text().split("\n")
     for made in CATALOGUE.values():
         (line,) = [line for line in lines if line.split()[:1] == [made.name]]
-        assert line.endswith(made.summary)
+        assert line.endswith(f"{made.summary} {made.caution}".rstrip())
 
 
 # For scripts --------------------------------------------------------------------------------------
