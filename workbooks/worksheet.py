@@ -16,10 +16,11 @@ from bisect import bisect_left
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from contextlib import suppress
 from dataclasses import dataclass
-from functools import cache, cached_property, lru_cache
+from functools import cached_property
 from pathlib import Path
-from typing import Final, Literal, NamedTuple, TypeGuard
+from typing import Final, Literal
 
+from workbooks.cell_xml import held_pattern, is_something, letters_of, stored_as, widened_spans
 from workbooks.cells import (
     LAST_COLUMN,
     LAST_ROW,
@@ -28,10 +29,9 @@ from workbooks.cells import (
     LogbookError,
     Value,
     cell_name,
-    column_letters,
-    column_number,
 )
-from workbooks.edits import UNSET, Edits, Unset
+from workbooks.edits import Edits, Unset
+from workbooks.sheet_patterns import NEVER, Shape, names, number_of, plain_rows
 from workbooks.xml_check import (
     ATTRIBUTES,
     MAIN_NAMESPACES,
@@ -48,12 +48,11 @@ _TYPE = re.compile(rb"""\s+t\s*=\s*(?:"[^"]*"|'[^']*')""")
 _VALUE_METADATA = re.compile(rb"""\s+vm\s*=\s*(?:"[^"]*"|'[^']*')""")
 _POSITION = re.compile(rb"""\sr\s*=\s*["']([A-Z]{1,3})([0-9]{1,7})["']""")
 
-# Excel's writing of characters that XML cannot carry (ST_Xstring, ECMA-376 part 1, 22.9.2.19);
-# text that happens to look like one has its underscore written that way.
-_UNWRITABLE = re.compile("[\x00-\x08\x0b-\x1f\ufffe\uffff]|_(?=x[0-9A-Fa-f]{4}_)")
-
 MOST_OF_ONE_ROW: Final = 32 << 20
 """Bytes without the end of a row after which a sheet is not plain"""
+
+MOST_OF_A_TAIL: Final = 1 << 20
+"""Bytes after the rows that are kept, so that the rows need not go by again for them"""
 
 MOST_SPANNED: Final = 1 << 21
 """Cells of the smallest rectangle around the cells that are read at once"""
@@ -63,27 +62,6 @@ MOST_SPANNED_IN_ALL: Final = 100_000_000
 
 MOST_SPANNED_AT_ONCE: Final = 1 << 24
 """The same for a sheet that must be read as a whole"""
-
-
-@cache
-def _letters(column: int) -> bytes:
-    return column_letters(column).encode()
-
-
-@cache
-def _number_of(letters: bytes) -> int:
-    return column_number(letters.decode())
-
-
-def _text(value: str) -> bytes:
-    escaped = _UNWRITABLE.sub(lambda found: f"_x{ord(found[0]):04X}_", value)
-    escaped = escaped.replace("&", "&amp;").replace("<", "&lt;").replace(">", "&gt;")
-    return escaped.encode()
-
-
-def _number(value: float) -> bytes:
-    # float() first: a numpy number's own repr is not a number's text.
-    return repr(float(value)).removesuffix(".0").encode()
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,129 +84,6 @@ class Stretch:
     last_column: int
 
 
-class _Names:
-    """Patterns of the elements of a sheet, by the prefixes that stand for the main namespace."""
-
-    def __init__(self, prefixes: frozenset[bytes], root_prefix: bytes) -> None:
-        self.prefix = root_prefix
-        # "(?:x:|)" matches as well what has no prefix, when both stand for the main namespace.
-        any_prefix = b"|".join(sorted(map(re.escape, prefixes), reverse=True))
-        self.any_prefix = name = rb"(?:" + any_prefix + rb")"
-
-        def element(local_name: bytes, attributes: bytes, inside: bytes) -> bytes:
-            """Return the pattern of an element that is empty or holds `inside`."""
-            opening = rb"<" + name + local_name + rb"(?=[\s/>])" + attributes
-            return opening + rb"(?:/>|>" + inside + rb"</" + name + local_name + rb"\s*>)"
-
-        def anything_but_end(local_name: bytes) -> bytes:
-            return rb"[^<]*(?:<(?!/" + name + local_name + rb"[\s>])[^<]*)*"
-
-        self.row = re.compile(
-            rb"<(" + any_prefix + rb")row(?: r=\"([0-9]{1,7})\")?(?=[\s/>])"
-            rb"(" + ATTRIBUTES + rb")(/?)>"
-        )
-        self.row_end = re.compile(rb"</" + name + rb"row\s*>")
-        formula = element(rb"f", rb"(?P<formula_attributes>" + ATTRIBUTES + rb")", rb"[^<]*")
-        value = element(rb"v", ATTRIBUTES, rb"(?P<stored>[^<]*)")
-        inline = element(rb"is", ATTRIBUTES, anything_but_end(rb"is"))
-        # The order of a cell's children is fixed: f, v, is, extLst (ECMA-376 part 1, 18.3.1.4).
-        # The common ` r="A1"` has groups of its own because taking attributes apart is slow.
-        self.cell = re.compile(
-            rb"<(?P<prefix>" + any_prefix + rb")c"
-            rb"(?P<name> r=\"(?P<letters>[A-Z]{1,3})(?P<digits>[0-9]{1,7})\")?(?=[\s/>])"
-            rb"(?P<attributes>" + ATTRIBUTES + rb")"
-            rb"(?:/>|>(?P<formula>\s*" + formula + rb")?"
-            rb"(?P<gap>\s*)(?P<value>" + value + rb")?(?P<inline>\s*" + inline + rb")?"
-            rb"(?P<rest>" + anything_but_end(rb"c") + rb")</" + name + rb"c\s*>)"
-        )
-        self.misplaced = re.compile(rb"<" + name + rb"(?:f|v|is)[\s/>]")
-        self.data = self.opening(rb"sheetData")
-        self.data_end = re.compile(rb"</" + name + rb"sheetData\s*>")
-
-    def opening(self, local_name: bytes) -> re.Pattern[bytes]:
-        """Return the pattern of a tag; its groups are the attributes and the slash, if any."""
-        return re.compile(
-            rb"<" + self.any_prefix + local_name + rb"(?=[\s/>])(" + ATTRIBUTES + rb")(/?)>"
-        )
-
-
-class _PlainRows:
-    """Patterns of rows that are laid out as nearly every program does it."""
-
-    def __init__(self, prefix: bytes) -> None:
-        name = re.escape(prefix)
-        self._prefix = name
-        # The one pattern holds a row to everything that the careful way looks at, cell by cell:
-        # its cells are named after it, and hold a formula, a value and a text in that order.
-        attributes = rb"(?: [A-Za-z_][\w:.-]*=\"[^\"<]*\")*"
-        formula = rb"\s*<%bf%b(?:/>|>[^<]*</%bf>)" % (name, attributes, name)
-        value = rb"\s*<%bv%b(?:/>|>[^<]*</%bv>)" % (name, attributes, name)
-        inline = rb"\s*<%bis>[^<]*(?:<(?!/%bis>)[^<]*)*</%bis>" % (name, name, name)
-        any_held = rb">(?:%b)?(?:%b)?(?:%b)?\s*</%bc>" % (formula, value, inline, name)
-        # What nearly every cell holds comes first: it halves the time.
-        number = rb"><%bv>[^<]*</%bv></%bc>" % (name, name, name)
-        text = rb"><%bis><%bt(?: xml:space=\"preserve\")?>[^<]*</%bt></%bis></%bc>" % ((name,) * 5)
-        # Each alternative shuts out the others: a row that does not fit in the end would else be
-        # tried in all the ways in which its cells can be taken.
-        common = number + rb"|" + text
-        held = rb"(?:" + common + rb"|(?!" + common + rb")" + any_held + rb")"
-        self._cell = rb"\s*<%bc r=\"%%b\1\"%b" % (name, attributes)
-        self._held = held
-        self._begin = rb"\s*<%brow r=\"([0-9]{1,7})\"%b" % (name, attributes)
-        any_cell = self._cell % rb"[A-Z]{1,3}" + rb"(?:/>|" + held + rb")"
-        self._end = rb"\s*</%brow>" % name
-        self.row = re.compile(self._begin + rb"(?:/>|>((?:" + any_cell + rb")*)" + self._end + b")")
-        self._shapes: dict[tuple[tuple[bytes, bytes], ...], _Shape] = {}
-        begin = rb"<%bc r=\"([A-Z]{1,3})[0-9]+\"" % name
-        self.cells = re.compile(begin + attributes + rb"(/?)>")
-        self.formulas = re.compile(begin + attributes + rb">\s*<%bf(%b)" % (name, attributes))
-        self.errors = re.compile(
-            begin + rb"(?:" + attributes + rb") t=\"e\"" + attributes + rb">(?:%b)?"
-            rb"\s*<%bv>([^<]*)<" % (formula, name)
-        )
-        self.formula_mark = b"<%bf" % prefix
-        self.error_mark = b' t="e"'
-        self.row_mark = b"<%brow " % prefix
-        self.row_end = b"</%brow>" % prefix
-        self.row_number = re.compile(rb"\s*<%brow r=\"([0-9]{1,7})\"" % name)
-
-    def shape(self, cells: Sequence[tuple[bytes, bytes]]) -> "_Shape":
-        """Return the pattern of rows with just these cells; raise Unusual if out of order."""
-        key = tuple(cells)
-        known = self._shapes.get(key)
-        if known:
-            return known
-        column = last = 0
-        for letters, slash in cells:
-            number = _number_of(letters)
-            if not column < number <= LAST_COLUMN:
-                raise Unusual
-            column = number
-            if not slash:
-                last = number
-        if not 0 < len(cells) <= 64 or cells[-1][1] or len(self._shapes) >= 100:
-            return _Shape(_NEVER, last, column)
-        inside = b"".join(
-            self._cell % letters
-            + (rb"(?:/>|" + self._held + rb")" if at < len(cells) else self._held)
-            for at, (letters, _) in enumerate(cells, 1)
-        )
-        row = re.compile(self._begin + rb">(" + inside + rb")" + self._end)
-        made = self._shapes[key] = _Shape(row, last, column)
-        return made
-
-
-class _Shape(NamedTuple):
-    """A pattern that a row like the one before fits, which is quicker than looking at its cells."""
-
-    row: re.Pattern[bytes]
-    last_column: int
-    """The last one that holds something"""
-    width: int
-    """The last one there is"""
-
-
-_NEVER = re.compile(rb"(?!)")
 _DATA = re.compile(rb"<(?:[\w.-]+:)?sheetData(?=[\s/>])(" + ATTRIBUTES + rb")(/?)>")
 
 
@@ -305,8 +160,8 @@ class SheetPart:
         if not head.startswith(b"<" + prefix + b"worksheet", layout.root_start):
             raise Unusual
         self._root_start = layout.root_start
-        self._names = _names(frozenset(layout.prefixes), prefix)
-        self._plain_rows = _plain_rows(prefix)
+        self._names = names(frozenset(layout.prefixes), prefix)
+        self._plain_rows = plain_rows(prefix)
 
     def _check_root(self, layout: Layout) -> None:
         path, part = self._file
@@ -334,7 +189,7 @@ class SheetPart:
         layout = check_xml(content, path, part)
         self._check_root(layout)
         root = re.match(rb"<([^\s/>]*:)?", layout.blanked(content)[layout.root_start :][:256])
-        self._names = _names(frozenset(layout.prefixes), (root and root[1]) or b"")
+        self._names = names(frozenset(layout.prefixes), (root and root[1]) or b"")
         self._whole = content, layout
 
     # -- reading
@@ -369,7 +224,8 @@ class SheetPart:
     def _begin_stock(self) -> None:
         self._formulas, self._array_rows, self.errors = {}, {}, {}
         self._covered = self._spanned = self.last_row = self.last_column = 0
-        self._shapes = (_Shape(_NEVER, 0, 0),) * 2
+        self._shapes = (Shape(NEVER, 0, 0),) * 2
+        self._tail = b""
         self._width = 0
 
     def _stretch_of_whole(self) -> Iterator[Stretch]:
@@ -416,6 +272,8 @@ class SheetPart:
                         yield Stretch(stretch, first, last, width)
                 if before >= most_rows:
                     return
+            elif len(self._tail) <= MOST_OF_A_TAIL:
+                self._tail += piece.content
         self._is_known = True
 
     def _plain_spans(self, rows: bytes, before: int) -> Iterator[tuple[int, int, int, int, int]]:
@@ -457,10 +315,10 @@ class SheetPart:
                 self.last_row = number
             if has_formulas and rows.find(patterns.formula_mark, begin, end) >= 0:
                 for letters, attributes in patterns.formulas.findall(rows, begin, end):
-                    self._note_formula(number, _number_of(letters), attributes)
+                    self._note_formula(number, number_of(letters), attributes)
             if has_errors and rows.find(patterns.error_mark, begin, end) >= 0:
                 for letters, text in patterns.errors.findall(rows, begin, end):
-                    self._note_error(number, _number_of(letters), text)
+                    self._note_error(number, number_of(letters), text)
             before = number
             position = found.end()
         self._shapes = shape, other
@@ -506,7 +364,7 @@ class SheetPart:
                     column += 1
                     yield column, found
                     continue
-            after = _number_of(letters)
+            after = number_of(letters)
             if digits != own_digits or not column < after <= LAST_COLUMN:
                 raise LogbookError(
                     f"{self._where}: cell {(letters + digits).decode()} is out of its place "
@@ -591,7 +449,9 @@ class SheetPart:
     def merged(self) -> list[Area]:
         """The merged cells."""
         self.take_stock()
-        tail = b"".join(piece.plain for piece in self._pieces() if piece.kind == "tail")
+        tail = self._tail
+        if self._whole or len(tail) > MOST_OF_A_TAIL:
+            tail = b"".join(piece.plain for piece in self._pieces() if piece.kind == "tail")
         areas = []
         for found in self._names.opening(rb"mergeCell").finditer(tail):
             area = Area.parsed(attributes_of(found[1]).get(b"ref", b"").decode())
@@ -700,7 +560,7 @@ class SheetPart:
             cells = self._new_cells(found[1], columns, edits.values_of(number)) if found else b""
             if cells and has_spans:
                 tag_end = row.index(b">") + 1
-                out += _widened_spans(row[:tag_end], columns), row[tag_end:], cells, end
+                out += widened_spans(row[:tag_end], columns), row[tag_end:], cells, end
             else:
                 out += row, cells, end
         out.append(rest)
@@ -730,7 +590,7 @@ class SheetPart:
             cell = None
             if ahead <= column:
                 # Markup cannot stand inside a value, so what is found here is the cell.
-                mark = b'<%bc r="%b%d"' % (tag[1], _letters(column), number)
+                mark = b'<%bc r="%b%d"' % (tag[1], letters_of(column), number)
                 place = plain.find(mark, passed, content_end)
                 if place >= 0:
                     cell = self._names.cell.match(plain, place, content_end)
@@ -755,7 +615,7 @@ class SheetPart:
                 inserted.append(column)
         opening = tag[0]
         if inserted:
-            opening = _widened_spans(opening, inserted)
+            opening = widened_spans(opening, inserted)
             if tag[4]:
                 return [opening[:-2], b">", *pieces, b"</", tag[1], b"row>"]
         return [opening, *pieces, content[done:row_end]]
@@ -774,7 +634,7 @@ class SheetPart:
         if not calculated and b"vm" in attributes:
             # Value metadata describes the value that is going.
             attributes = _VALUE_METADATA.sub(b"", attributes)
-        kind, stored = _stored(value, calculated, prefix)
+        kind, stored = stored_as(value, calculated, prefix)
         before = after = b""
         if rest is not None:
             # From the original, where comments are not blanked.
@@ -798,10 +658,10 @@ class SheetPart:
 
     def _new_cell(self, row: int, column: int, value: Value, style: bytes, prefix: bytes) -> bytes:
         calculated = bool(self._array_rows) and self.has_formula(row, column)
-        kind, stored = _stored(value, calculated, prefix)
+        kind, stored = stored_as(value, calculated, prefix)
         return b'<%bc r="%b%d"%b%b>%b</%bc>' % (
             prefix,
-            _letters(column),
+            letters_of(column),
             row,
             style,
             kind,
@@ -825,8 +685,8 @@ class SheetPart:
             # From the end, so that the places before stay as they were counted.
             for place in others:
                 value = values[place]
-                if _is_something(value):
-                    texts[place] = _stored(value, False, prefix)[1]
+                if is_something(value):
+                    texts[place] = stored_as(value, False, prefix)[1]
                 else:
                     del texts[place]
         # as short as elsewhere: 5, not 5.0
@@ -841,9 +701,15 @@ class SheetPart:
         # A zero byte, which no value's text can hold, stands for the row's number.
         pattern = b"".join(
             b'<%bc r="%b\0"%b%b</%bc>'
-            % (prefix, _letters(column), self._style(b"", column), _held(value, prefix), prefix)
+            % (
+                prefix,
+                letters_of(column),
+                self._style(b"", column),
+                held_pattern(value, prefix),
+                prefix,
+            )
             for column, value in zip(columns, values, strict=True)
-            if _is_something(value)
+            if is_something(value)
         )
         others = [place for place, value in enumerate(values) if type(value) is not float]
         return pattern, others[::-1]
@@ -889,69 +755,4 @@ class SheetPart:
 
 
 _OWN_STYLE = re.compile(rb"""\scustomFormat\s*=\s*["'](?:1|true)["']""")
-_SPANS = re.compile(rb"""\sspans\s*=\s*["']([0-9: ]+)["']""")
 _REFERENCE = re.compile(rb"""\sref\s*=\s*["']([^"']*)["']""")
-
-
-@cache
-def _names(prefixes: frozenset[bytes], root_prefix: bytes) -> _Names:
-    return _Names(prefixes, root_prefix)
-
-
-@cache
-def _plain_rows(prefix: bytes) -> _PlainRows:
-    return _PlainRows(prefix)
-
-
-def _stored(value: Value, calculated: bool, prefix: bytes) -> tuple[bytes, bytes]:
-    """Return the cell's `t` attribute and the elements that hold the value."""
-    if type(value) is float:
-        return b"", b"<%bv>%b</%bv>" % (prefix, _number(value), prefix)
-    match value:
-        case None:
-            return b"", b""
-        case bool():
-            kind, text = b' t="b"', b"1" if value else b"0"
-        case ErrorValue():
-            kind, text = b' t="e"', value.text.encode()
-        case str() if calculated:
-            kind, text = b' t="str"', _text(value)
-        case str():
-            return b' t="inlineStr"', _inline(value, prefix)
-        case _:
-            kind, text = b"", _number(value)
-    return kind, b"<%bv>%b</%bv>" % (prefix, text, prefix)
-
-
-def _is_something(value: "Value | Unset") -> "TypeGuard[float | int | str | ErrorValue]":
-    return value is not None and value is not UNSET
-
-
-def _held(value: Value, prefix: bytes) -> bytes:
-    """Return the pattern of what follows a new cell's style, for values of this one's type."""
-    if type(value) is float:
-        return b"><%bv>%%a</%bv>" % (prefix, prefix)
-    return _stored(value, False, prefix)[0] + b">%b"
-
-
-@lru_cache(maxsize=256)
-def _inline(value: str, prefix: bytes) -> bytes:
-    return b'<%bis><%bt xml:space="preserve">%b</%bt></%bis>' % (
-        prefix,
-        prefix,
-        _text(value),
-        prefix,
-        prefix,
-    )
-
-
-def _widened_spans(tag: bytes, inserted: list[int]) -> bytes:
-    found = _SPANS.search(tag) if b"spans" in tag and inserted else None
-    if not found:
-        return tag
-    spans = [tuple(map(int, span.split(b":"))) for span in found[1].split()]
-    if all(any(span[0] <= column <= span[-1] for span in spans) for column in inserted):
-        return tag
-    first = min(inserted[0], *(span[0] for span in spans))
-    last = max(inserted[-1], *(span[-1] for span in spans))
-    return tag[: found.start(1)] + b"%d:%d" % (first, last) + tag[found.end(1) :]

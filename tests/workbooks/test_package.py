@@ -18,6 +18,7 @@ import warnings
 import zipfile
 import zlib
 from collections.abc import Iterator
+from contextlib import suppress
 from pathlib import Path
 from xml.parsers import expat
 
@@ -32,6 +33,7 @@ sys.path.insert(0, str(Path(__file__).parent))
 from everything import MAIN, NIGHT_PART, write_everything
 
 from workbooks.cells import ErrorValue, LogbookError, Value, cell_name, column_number
+from workbooks.edits import Edits
 from workbooks.logbook import Logbook
 from workbooks.package import Package
 from workbooks.worksheet import SheetPart
@@ -360,6 +362,40 @@ def test_no_edit_no_change(part: bytes) -> None:
     sheet = SheetPart(part, Path("night.xlsx"), "sheet")
     assert sheet.edited({}) == part
     assert sheet.edited({9: {9: None}}) == part
+
+
+@settings(max_examples=300, deadline=None)
+@given(sheet_parts(), grids, st.integers(1, 400))
+def test_a_sheet_in_pieces_is_the_sheet_as_a_whole(
+    part: bytes, edits: dict[int, dict[int, Value]], size: int
+) -> None:
+    """However the unpacked part is cut up, the stock and the edited part are the same."""
+    whole = SheetPart(part, Path("night.xlsx"), "sheet")
+
+    def pieces() -> Iterator[bytes]:
+        return (part[at : at + size] for at in range(0, len(part), size))
+
+    sheet = SheetPart(pieces, Path("night.xlsx"), "sheet")
+    assert b"".join(sheet.edited_pieces(Edits.of(edits))) == whole.edited(edits)
+    assert (sheet.last_row, sheet.last_column) == (whole.last_row, whole.last_column)
+    assert (sheet.errors, sheet.formula_columns) == (whole.errors, whole.formula_columns)
+
+
+@pytest.mark.parametrize(
+    "ending", ["", '<c r="AO1"><v>1</v><q/></c>', "<c/>", "<!-- -->", '<c r="AO2"><v>1</v></c>']
+)
+def test_a_row_that_does_not_fit_in_the_end_takes_no_longer(ending: str) -> None:
+    """A pattern with two ways for each of forty cells would take years to say no."""
+    cells = "".join(f'<c r="{cell_name(1, at)}" t="n"><v>{at}</v></c>' for at in range(1, 41))
+    second = cells.replace('1" t', '2" t')
+    begun = time.perf_counter()
+    with suppress(LogbookError):
+        SheetPart(
+            sheet_xml(f'<row r="1">{cells}{ending}</row><row r="2">{second}{ending}</row>'),
+            Path("night.xlsx"),
+            "sheet",
+        )
+    assert time.perf_counter() - begun < 2
 
 
 def sheet_xml(rows: str, before: str = "", after: str = "") -> bytes:
