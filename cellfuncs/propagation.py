@@ -31,7 +31,7 @@ from cellfuncs.catalogue import (
 )
 from cellfuncs.errors import InputError
 from cellfuncs.physics import expansion
-from cellfuncs.symbols import Expr, NotTraceable, Real, build, name, node, number_of
+from cellfuncs.symbols import Expr, NotTraceable, Real, build, mentions, name, node, number_of
 
 GAUSS_NODE, GAUSS_WEIGHT = "gauss_node", "gauss_weight"
 
@@ -229,20 +229,6 @@ def _rebuilt(expr: Expr, of: Callable[[Expr], Expr | None]) -> Expr | None:
 
 def _is_node(expr: Expr) -> bool:
     return expr.operation == "name" and expr.arguments[0] == GAUSS_NODE
-
-
-def mentions(expr: Expr, cell: str) -> bool:
-    """Tell whether a cell's or a table's name is among the leaves."""
-    seen: set[int] = set()
-    waiting = [expr]
-    while waiting:
-        each = waiting.pop()
-        if each.operation == "name" and each.arguments[0] == cell:
-            return True
-        fresh = [part for part in each.arguments if isinstance(part, Expr) and id(part) not in seen]
-        seen.update(map(id, fresh))
-        waiting += fresh
-    return False
 
 
 def combined(slopes_and_sigmas: list[tuple[Expr, Expr]]) -> Expr:

@@ -166,6 +166,20 @@ def number_of(value: Expr) -> float | None:
     return value.arguments[0] if value.operation == "number" else None
 
 
+def mentions(expr: Expr, cell: str) -> bool:
+    """Tell whether a cell's or a table's name is among the leaves."""
+    seen: set[int] = set()
+    waiting = [expr]
+    while waiting:
+        each = waiting.pop()
+        if each.operation == "name" and each.arguments[0] == cell:
+            return True
+        fresh = [part for part in each.arguments if isinstance(part, Expr) and id(part) not in seen]
+        seen.update(map(id, fresh))
+        waiting += fresh
+    return False
+
+
 def build(operation: str, *arguments: Any) -> Expr:
     """Return the node of an operation, with constants folded and neutral elements dropped."""
     nodes = tuple(node(argument) for argument in arguments)

@@ -10,25 +10,21 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Final
 
+from cellfuncs import propagation
 from cellfuncs.catalogue import Argument, CosmologySet, Function, Number
 from cellfuncs.errors import CellError
 from cellfuncs.physics import expansion, lines
 from cellfuncs.physics.expansion import Cosmology
-from cellfuncs.symbols import Expr, NotTraceable, build, name, node
+from cellfuncs.symbols import Expr, NotTraceable, build, mentions, name, node
 
 LONGEST: Final = 8192
 """Characters that Excel takes in one formula."""
 
 
 def _tables() -> dict[str, tuple[Any, ...]]:
-    nodes, weights = expansion.gauss_legendre()
-    series = expansion.volume_series()
     known = lines.keys()
     return {
-        "gauss_node": tuple(nodes.tolist()),
-        "gauss_weight": tuple(weights.tolist()),
-        "series_power": tuple(float(power) for power in range(2, len(series) + 2)),
-        "series_volume": series,
+        **{key: tuple(values.tolist()) for key, values in propagation.tables().items()},
         "line_key": tuple(known),
         "line_vacuum": tuple(line.vacuum for line in known.values()),
     }
@@ -249,20 +245,6 @@ def guarded(made: Function, given: Mapping[str, Any]) -> Guarded:
     if value.operation != "name" and mentions(value, "omega_photon"):
         allowed.append(name("expansion_holds"))
     return Guarded(value, tuple(blank), tuple(typed), (all_of(allowed),) if allowed else ())
-
-
-def mentions(expr: Expr, cell: str) -> bool:
-    """Tell whether an expression names a cell."""
-    seen: set[int] = set()
-    waiting = [expr]
-    while waiting:
-        each = waiting.pop()
-        if each.operation == "name" and each.arguments[0] == cell:
-            return True
-        fresh = [part for part in each.arguments if isinstance(part, Expr) and id(part) not in seen]
-        seen.update(map(id, fresh))
-        waiting += fresh
-    return False
 
 
 def _guard(argument: Argument, value: Expr, typed: list[Expr], allowed: list[Expr]) -> None:
