@@ -2,7 +2,7 @@
 
 from collections import Counter, defaultdict
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import asdict, dataclass, field
+from dataclasses import dataclass, field
 from datetime import date, time, timedelta
 from functools import cached_property, lru_cache
 from pathlib import Path
@@ -107,9 +107,6 @@ class CheckReport:
     @property
     def has_problems(self) -> bool:
         return bool(self.findings)
-
-    def as_data(self) -> dict[str, Any]:
-        return asdict(self)
 
 
 def check(path: Path, recipe: Recipe | None = None) -> CheckReport:

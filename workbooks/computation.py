@@ -237,7 +237,6 @@ class Computation:
             case "not a line":
                 return given.fail(_is_line)
         raise AssertionError(problem.kind)
-        return ()
 
     def _missing(self, problem: Problem) -> Any:
         if not problem.alternatives:

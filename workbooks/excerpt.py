@@ -68,11 +68,6 @@ class Excerpts:
             ).encode(),
         }
 
-    @property
-    def overhead(self) -> int:
-        """The bytes that are read again for each excerpt."""
-        return sum(map(len, self._parts.values()))
-
     def opened(self, stretch: Stretch) -> CalamineSheet:
         """Return some rows as calamine has read them; other threads run meanwhile."""
         package = io.BytesIO()

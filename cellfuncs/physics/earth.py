@@ -70,9 +70,6 @@ MOTION: Final = (
 """Of the Earth's and the Sun's centre from the barycentre [km/s, s of light], and GM/rc² at the
 Earth of the Sun"""
 
-ORIENTATION: Final = ("pole_x", "pole_y", "locator", "origin")
-"""The celestial intermediate pole, the CIO's locator and the equation of the origins [rad]"""
-
 SEASON_TABLE: Final = (
     *("first", "last", *MOTION, "pole_x", "pole_y", "turn_offset", "origin"),
     *("tdb_minus_tt", "tt_minus_utc", "leap_second"),
@@ -117,7 +114,8 @@ def _components(vectors: Any) -> Any:
 
 
 def orientation(tt: Any) -> Any:
-    """Return ORIENTATION one by one: IAU 2006 precession, IAU 2000B nutation
+    """Return the celestial intermediate pole's x and y, the CIO's locator and the equation of the
+    origins [rad]: IAU 2006 precession, IAU 2000B nutation.
 
     2000B keeps 77 of 2000A's 1365 terms and is within 1 mas of it until 2050 (McCarthy & Luzum
     2003), which is 0.07 ms of sidereal time.
