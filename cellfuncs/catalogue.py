@@ -11,7 +11,7 @@ from dataclasses import dataclass, field, replace
 from datetime import datetime
 from functools import lru_cache
 from math import inf, isfinite, nextafter
-from typing import Any, Final
+from typing import Any, ClassVar, Final
 
 import numpy as np
 
@@ -91,9 +91,8 @@ class Numeric(Argument):
     def column(self, value: Any) -> tuple[Any, CellError | None]:
         """Return float64 with NaN where nothing can be computed, and the first InputError met."""
         array = _as_array(value)
-        if array.dtype.kind in "fiu":
-            with np.errstate(all="ignore"):
-                return self._of_numbers(array.astype(np.float64)), None
+        if array.dtype.kind in self.kinds:
+            return self._of_array(array), None
         wrong: CellError | None = None
         numbers = np.full(array.shape, np.nan)
         flat = numbers.reshape(-1)
@@ -106,9 +105,12 @@ class Numeric(Argument):
                 pass
         return numbers, wrong
 
+    kinds: ClassVar[str] = "fiu"
+    """The kinds of numpy's arrays that are taken at once, as numpy has them by a letter"""
+
     @abstractmethod
-    def _of_numbers(self, numbers: Any) -> Any:
-        """Return an array as the formula takes it, NaN where a number is not allowed."""
+    def _of_array(self, array: Any) -> Any:
+        """Return such an array as the formula takes it, NaN where an element is not allowed."""
 
     def _filled(self, value: Any) -> Any:
         return self.default if self.optional and left_out(value) else value
@@ -175,7 +177,9 @@ class Number(Numeric):
         except (TypeError, ValueError, ArithmeticError):
             raise InputError(f"{self.name} is {shown(value)}, not a number") from None
 
-    def _of_numbers(self, numbers: Any) -> Any:
+    def _of_array(self, array: Any) -> Any:
+        with np.errstate(all="ignore"):
+            numbers = array.astype(np.float64)
         low, high = self.open_interval
         good = (numbers > low) & (numbers < high)
         return numbers if good.all() else np.where(good, numbers, np.nan)

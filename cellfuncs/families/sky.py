@@ -4,7 +4,7 @@ Angles are degrees, right ascension too, in the ICRS; longitude is positive to t
 """
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, ClassVar
 
 from cellfuncs.catalogue import Argument, Choice, Number, Numeric, Truth, function, is_empty, shown
 from cellfuncs.constants import LIGHT_SPEED
@@ -38,12 +38,14 @@ class Moment(Numeric):
         day, fraction = times.utc_parts(value, self.name)
         return (day - earth.EPOCH) + fraction
 
+    kinds: ClassVar[str] = "fiuM"
+
     def symbol(self, value: Expr) -> Expr:
         # what is marked to be kept is a moment already
         return value if value.operation == "kept" else Expr("reading", node("moment"), value)
 
-    def _of_numbers(self, numbers: Any) -> Any:
-        day, fraction, _ = times.utc_columns(numbers, self.name)
+    def _of_array(self, array: Any) -> Any:
+        day, fraction, _ = times.utc_columns(array, self.name)
         return (day - earth.EPOCH) + fraction
 
 

@@ -247,7 +247,7 @@ def _of_datetime(value: datetime, name: str) -> tuple[float, float]:
             moment = value.replace(tzinfo=None) - offset
         except OverflowError:
             raise _out_of_range(value, name) from None
-    seconds = moment.second + moment.microsecond * 1e-6
+    seconds = moment.second + moment.microsecond / 1e6
     return _of_clock(moment.toordinal(), moment.hour * 60 + moment.minute, seconds, value, name)
 
 

@@ -319,3 +319,11 @@ def test_provenance_says_what_moves_and_turns_the_earth() -> None:
         assert words in said
     # the last leap second so far: IERS Bulletin C 52
     assert "leap seconds known to 2017-01-01" in said
+
+
+@pytest.mark.parametrize("unit", ["s", "ms", "us", "ns"])
+def test_a_column_of_numpys_moments_is_what_each_is_alone(unit: str) -> None:
+    texts = ["2024-03-01T22:14:30", "2016-12-31T23:59:59", "1959-01-01T00:00:00"]
+    found = cf.time_julian(np.array([*texts, "NaT"], dtype=f"datetime64[{unit}]"))
+    assert found[:2].tolist() == [cf.time_julian(text) for text in texts[:2]]
+    assert np.isnan(found[2:]).all()
