@@ -4,13 +4,11 @@ from dataclasses import dataclass
 from datetime import date, timedelta
 from typing import Final
 
-from openpyxl.utils import get_column_letter
-
 from cellfuncs.bridges.steps import Steps
 from cellfuncs.errors import CellError
 from cellfuncs.physics import earth, times
 from workbooks.recipe import RecipeError
-from workbooks.sheets import HEADER_ROW, Book
+from workbooks.sheets import HEADER_ROW, Book, put_named
 
 LONGEST: Final = 40 * 366
 """Days that a season table may have"""
@@ -63,13 +61,10 @@ def season_sheet(book: Book, season: Season) -> None:
     sheet.sheet_state = "hidden"
     first = season.first.toordinal() - date(2000, 1, 1).toordinal()
     end = season.last.toordinal() - date(2000, 1, 1).toordinal() + 1
-    columns = {"first": [first], "last": [end], **earth.season(first, end)}
-    for place, (key, values) in enumerate(columns.items(), 1):
-        sheet.cell(1, place, f"season_{key}")
-        for row, value in enumerate(values, 2):
-            sheet.cell(row, place, float(value))
-        letter = get_column_letter(place)
-        book.name(f"season_{key}", sheet, f"${letter}$2:${letter}${len(values) + 1}")
+    put_named(book, sheet, 1, "season_first", [first])
+    put_named(book, sheet, 2, "season_last", [end])
+    for place, (key, values) in enumerate(earth.season(first, end).items(), 3):
+        put_named(book, sheet, place, f"season_{key}", values.tolist())
 
 
 def working_sheet(book: Book, title: str, steps: Steps, rows: range, row_mark: str) -> None:

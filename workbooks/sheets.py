@@ -97,6 +97,15 @@ def put_heading(sheet: Worksheet, row: int, words: Sequence[str]) -> None:
         cell.fill = fill_of(COMPUTED)
 
 
+def put_named(book: Book, sheet: Worksheet, place: int, key: str, values: Sequence[Any]) -> None:
+    """Put values below their name into a column, and name their range."""
+    sheet.cell(1, place, key)
+    for row, value in enumerate(values, 2):
+        sheet.cell(row, place, value)
+    letter = get_column_letter(place)
+    book.name(key, sheet, f"${letter}$2:${letter}${len(values) + 1}")
+
+
 def letters_of(table: Table) -> dict[str, str]:
     """Return the letter of each column, inputs first."""
     ordered = [*table.inputs, *table.computed]

@@ -1,6 +1,6 @@
 """The sheets around a template's tables: settings, line names, how to use it, provenance."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from datetime import datetime
 from typing import Any, Final
 
@@ -34,6 +34,7 @@ from workbooks.sheets import (
     put,
     put_heading,
     put_input,
+    put_named,
     put_result,
 )
 
@@ -318,19 +319,19 @@ def hidden_tables(book: Book, recipe: Recipe) -> None:
     }
     for key, values in wanted.items():
         place += 1
-        _column_of(book, sheet, place, key, values)
+        put_named(book, sheet, place, key, values)
     if recipe.text.cosmology:
         place += 1
-        _column_of(book, sheet, place, "published_set", tuple(PUBLISHED))
+        put_named(book, sheet, place, "published_set", tuple(PUBLISHED))
         for cell in COSMOLOGY_CELLS:
             if cell.parameter != "Ode0":
                 place += 1
                 values = tuple(_published_value(set_name, cell) for set_name in PUBLISHED)
-                _column_of(book, sheet, place, f"published_{cell.cell}", values)
+                put_named(book, sheet, place, f"published_{cell.cell}", values)
         for key, formula in derived_settings().items():
             if key.endswith(("in_one_sum", "in_sums")):
                 place += 1
-                _column_of(book, sheet, place, key, ("=" + text_of(formula),))
+                put_named(book, sheet, place, key, ("=" + text_of(formula),))
         place += 1
         _cosmology_range(book, sheet, place)
         place += 2
@@ -338,7 +339,7 @@ def hidden_tables(book: Book, recipe: Recipe) -> None:
         # what was typed counts only while the user's own set is in use
         own = Expr("IF", Expr("same", name(SET_CELL), node(OWN)), typed, node(""))
         blank = Expr("IF", Expr("blank", typed), node(""), own)
-        _column_of(book, sheet, place, "omega_dark_energy_own", ("=" + text_of(blank),))
+        put_named(book, sheet, place, "omega_dark_energy_own", ("=" + text_of(blank),))
 
 
 def _cosmology_range(book: Book, sheet: Worksheet, place: int) -> None:
@@ -349,14 +350,6 @@ def _cosmology_range(book: Book, sheet: Worksheet, place: int) -> None:
         sheet.cell(row, place + 1, f"={used}")
     first, last = get_column_letter(place), get_column_letter(place + 1)
     book.name(COSMOLOGY_RANGE, sheet, f"${first}$2:${last}${len(COSMOLOGY_CELLS) + 1}")
-
-
-def _column_of(book: Book, sheet: Worksheet, place: int, key: str, values: Sequence[Any]) -> None:
-    sheet.cell(1, place, key)
-    for row, value in enumerate(values, 2):
-        sheet.cell(row, place, value)
-    letter = get_column_letter(place)
-    book.name(key, sheet, f"${letter}$2:${letter}${len(values) + 1}")
 
 
 def _published_value(set_name: str, cell: CosmologyCell) -> float:
