@@ -25,17 +25,19 @@ from workbooks import supporting
 from workbooks.charts import chart_sheet
 from workbooks.connect import SPELLING
 from workbooks.expression import Cells
-from workbooks.gathered import Gathered
-from workbooks.package import write_whole
 from workbooks.recipe import (
+    ROW_OK,
+    STATUS,
     Column,
     Problem,
     Recipe,
     Table,
     lines_wanted,
     season_wanted,
+    unexplained,
     working_title,
 )
+from workbooks.saving import write_whole
 from workbooks.season import Season, season_sheet, working_sheet
 from workbooks.settings import COSMOLOGY_CELLS
 from workbooks.sheets import (
@@ -61,20 +63,8 @@ from workbooks.sheets import (
     quoted,
 )
 
-STATUS: Final = "Status"
 ROW: Final = "\0"
 """Stands for the row number in a formula that is written once for all rows"""
-ROW_OK: Final = "ok"
-
-
-def unexplained(table: Table, key: str) -> str:
-    """Return what is said of a row in which a column has no result though the inputs look well."""
-    tree = table.nodes[key]
-    advice = "look at this row's inputs and at the sheet Settings"
-    if isinstance(tree, Gathered):
-        of = f" of this {table.columns[tree.by.key].label}" if tree.by else ""
-        advice = f"look at all rows{of}"
-    return f"{table.columns[key].label}: no result; {advice}"
 
 
 @dataclass(frozen=True)

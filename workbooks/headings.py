@@ -9,11 +9,10 @@ from typing import Any, Final
 
 from cellfuncs import units
 from cellfuncs.errors import InputError
-from workbooks.build import STATUS
 from workbooks.fill import COMPUTED_WITH
 from workbooks.logbook import Logbook, Sheet, cell_name, parse_header
 from workbooks.matching import Match, folded, labels_of, matched
-from workbooks.recipe import Column, Recipe, Table
+from workbooks.recipe import STATUS, Column, Recipe, Table
 
 SUPPORTING: Final = (
     "settings",

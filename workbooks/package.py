@@ -8,10 +8,7 @@ from lxml import etree
 
 from workbooks.archive import Archive
 from workbooks.cells import LogbookError
-from workbooks.saving import check_target, write_whole
 from workbooks.xml_check import MAIN_NAMESPACES
-
-__all__ = ["Package", "check_target", "write_whole"]
 
 RELATIONSHIP_IDS = (
     "{http://schemas.openxmlformats.org/officeDocument/2006/relationships}id",

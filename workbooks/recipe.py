@@ -30,13 +30,17 @@ from workbooks.expression import (
     given_arguments,
     needed,
 )
-from workbooks.gathered import row_keys
+from workbooks.gathered import Gathered, row_keys
 from workbooks.logbook import Header, parse_header
 from workbooks.parsing import ExpressionError, Parser
 from workbooks.settings import COSMOLOGY_CELLS, COSMOLOGY_KEYS, reserved_names
 from workbooks.uncertainty import Uncertainty
 
 BUILT_IN: Final = files("workbooks") / "recipes"
+
+STATUS: Final = "Status"
+"""Header of the column that a template adds: it says in words what is wrong in a row"""
+ROW_OK: Final = "ok"
 
 
 class RecipeError(ValueError):
@@ -244,6 +248,16 @@ class Recipe:
     @property
     def settings(self) -> dict[str, Setting]:
         return {setting.key: setting for setting in self.text.settings}
+
+
+def unexplained(table: Table, key: str) -> str:
+    """Return what is said of a row in which a column has no result though the inputs look well."""
+    tree = table.nodes[key]
+    advice = "look at this row's inputs and at the sheet Settings"
+    if isinstance(tree, Gathered):
+        of = f" of this {table.columns[tree.by.key].label}" if tree.by else ""
+        advice = f"look at all rows{of}"
+    return f"{table.columns[key].label}: no result; {advice}"
 
 
 def built_in() -> list[str]:
