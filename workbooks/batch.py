@@ -1,4 +1,4 @@
-"""Many logbooks filled at once: one that cannot be filled does not stop the others."""
+"""Many logbooks at once: one that cannot be read does not stop the others."""
 
 import multiprocessing
 import os
@@ -9,7 +9,7 @@ from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass, field
 from glob import has_magic
 from pathlib import Path
-from typing import Final, Protocol, TypeVar
+from typing import Any, Final, Protocol, TypeVar
 
 from cellfuncs.errors import CellError
 from workbooks.fill import Report, fill
@@ -36,7 +36,7 @@ class Task:
 
 @dataclass(frozen=True)
 class Failure:
-    """A logbook that could not be filled, and the sentence that says why."""
+    """A logbook of which nothing came, and the sentence that says why."""
 
     logbook: str
     sentence: str
@@ -46,7 +46,8 @@ class Failure:
 class BatchReport:
     """What became of many logbooks."""
 
-    logbooks: list[Report] = field(default_factory=list)
+    logbooks: list[Any] = field(default_factory=list)
+    """The reports, in the order of the logbooks"""
     failed: list[Failure] = field(default_factory=list)
     passed_over: list[str] = field(default_factory=list)
     """Files that are no logbooks of a person's: backups, and what `fill` has written"""
@@ -109,18 +110,18 @@ def fill_all(tasks: Sequence[Task], told: Callable[[Path], None] = lambda _: Non
 
     The report has them in the order of `tasks`.
     """
-    report = BatchReport()
-    for result in each_of(tasks, _filled, told):
-        (report.logbooks if isinstance(result, Report) else report.failed).append(result)  # type: ignore[arg-type]
-    return report
+    return each_of(tasks, _filled, told)
 
 
 def each_of(
     tasks: Sequence[Piece],
     work: Callable[[Piece], "Outcome | Failure"],
     told: Callable[[Path], None] = lambda _: None,
-) -> "list[Outcome | Failure]":
-    """Return what `work` gives for each task, several done at a time, in the order of `tasks`."""
+) -> BatchReport:
+    """Return what `work` gives for each task, several done at a time; `told` hears of each.
+
+    The report has them in the order of `tasks`.
+    """
     results: dict[int, Outcome | Failure] = {}
     waiting = list(range(len(tasks)))
     workers = min(os.cpu_count() or 1, len(tasks))
@@ -140,7 +141,14 @@ def each_of(
             results[index] = _ended(tasks[index])
             told(tasks[index].logbook)
         workers = 1
-    return [result for _, result in sorted(results.items(), key=lambda each: each[0])]
+    report = BatchReport()
+    for index in sorted(results):
+        result = results[index]
+        if isinstance(result, Failure):
+            report.failed.append(result)
+        else:
+            report.logbooks.append(result)
+    return report
 
 
 def _processes(workers: int) -> ProcessPoolExecutor:

@@ -1,17 +1,17 @@
 """The command `cellfuncs check`: one logbook, or many at once."""
 
-import json
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from workbooks.progress import progress
-from workbooks.statuses import DATA_PROBLEMS, WRONG_CALL
+from workbooks.statuses import DATA_PROBLEMS
+from workbooks.told import tell_all, tell_one
 
 if TYPE_CHECKING:
-    from workbooks.batch import Failure
+    from workbooks.batch import BatchReport, Failure
     from workbooks.check import CheckReport
 
 
@@ -58,39 +58,17 @@ def check(
         commented = None
         if annotate is not None:
             commented = annotated(logbooks[0], annotate, report.findings, overwrite=overwrite)
-        if as_json:
-            print(json.dumps(asdict(report), ensure_ascii=False, indent=1))
-        else:
-            _print(report)
-            if commented is not None:
-                print(f"{annotate}: a copy with comments on {commented} cells")
+        tell_one(report, as_json, _print)
+        if commented is not None and not as_json:
+            print(f"{annotate}: a copy with comments on {commented} cells")
         if report.has_problems:
             raise typer.Exit(DATA_PROBLEMS)
         return
     if annotate is not None:
         raise typer.BadParameter("--annotate takes one logbook")
     with progress(len(logbooks), "looking through") as tell:
-        results = batch.each_of([Task(path, recipe) for path in logbooks], checked, tell)
-    failed = [result for result in results if isinstance(result, batch.Failure)]
-    reports = [result for result in results if not isinstance(result, batch.Failure)]
-    if as_json:
-        told = {
-            "logbooks": [asdict(report) for report in reports],
-            "failed": [asdict(failure) for failure in failed],
-            "passed_over": [str(path) for path in passed_over],
-        }
-        print(json.dumps(told, ensure_ascii=False, indent=1))
-    else:
-        for report in reports:
-            _print(report)
-        for failure in failed:
-            print(f"{failure.logbook}: not looked through, {failure.sentence}")
-        for path in passed_over:
-            print(f"{path}: passed over, it is a backup or was written by fill")
-        with_findings = sum(report.has_problems for report in reports)
-        print(f"{len(reports)} looked through, {with_findings} of them with findings")
-    if failed or any(report.has_problems for report in reports):
-        raise typer.Exit(DATA_PROBLEMS if reports else WRONG_CALL)
+        reports = batch.each_of([Task(path, recipe) for path in logbooks], checked, tell)
+    tell_all(reports, passed_over, as_json, _print, "looked through", _summary)
 
 
 def checked(task: Task) -> "CheckReport | Failure":
@@ -103,6 +81,11 @@ def checked(task: Task) -> "CheckReport | Failure":
         task,
         lambda task: checking.check(task.logbook, load(task.recipe) if task.recipe else None),
     )
+
+
+def _summary(reports: "BatchReport") -> str:
+    with_findings = sum(report.has_problems for report in reports.logbooks)
+    return f"{len(reports.logbooks)} looked through, {with_findings} of them with findings"
 
 
 def _print(report: "CheckReport") -> None:

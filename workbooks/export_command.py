@@ -1,17 +1,17 @@
 """The command `cellfuncs export`: one logbook, or many at once."""
 
-import json
-from dataclasses import asdict, dataclass
+from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from workbooks.progress import progress
-from workbooks.statuses import DATA_PROBLEMS, WRONG_CALL, rows_told
+from workbooks.statuses import DATA_PROBLEMS, rows_told
+from workbooks.told import tell_all, tell_one
 
 if TYPE_CHECKING:
-    from workbooks.batch import Failure
+    from workbooks.batch import BatchReport, Failure
     from workbooks.export import ExportReport
 
 
@@ -71,10 +71,7 @@ def export(
         with progress(1, "exporting") as tell:
             report = _of(task)
             tell(task.logbook)
-        if as_json:
-            print(json.dumps(asdict(report), ensure_ascii=False, indent=1))
-        else:
-            _print(report)
+        tell_one(report, as_json, _print)
         if report.has_problems:
             raise typer.Exit(DATA_PROBLEMS)
         return
@@ -94,26 +91,8 @@ def export(
                 f"{other} and {task.logbook} would both be written to {task.output}"
             )
     with progress(len(tasks), "exporting") as tell:
-        results = batch.each_of(tasks, exported, tell)
-    failed = [result for result in results if isinstance(result, batch.Failure)]
-    reports = [result for result in results if not isinstance(result, batch.Failure)]
-    if as_json:
-        told = {
-            "logbooks": [asdict(report) for report in reports],
-            "failed": [asdict(failure) for failure in failed],
-            "passed_over": [str(path) for path in passed_over],
-        }
-        print(json.dumps(told, ensure_ascii=False, indent=1))
-    else:
-        for report in reports:
-            _print(report)
-        for failure in failed:
-            print(f"{failure.logbook}: not exported, {failure.sentence}")
-        for path in passed_over:
-            print(f"{path}: passed over, it is a backup or was written by fill")
-        print(f"{len(reports)} exported, {len(failed)} not exported")
-    if failed or any(report.has_problems for report in reports):
-        raise typer.Exit(DATA_PROBLEMS if reports else WRONG_CALL)
+        reports = batch.each_of(tasks, exported, tell)
+    tell_all(reports, passed_over, as_json, _print, "exported", _summary)
 
 
 def exported(task: Task) -> "ExportReport | Failure":
@@ -135,6 +114,10 @@ def _of(task: Task) -> "ExportReport":
         dates=task.dates,
         overwrite=task.overwrite,
     )
+
+
+def _summary(reports: "BatchReport") -> str:
+    return f"{len(reports.logbooks)} exported, {len(reports.failed)} not exported"
 
 
 def _print(report: "ExportReport") -> None:

@@ -1,15 +1,14 @@
 """The command `cellfuncs fill`: one logbook, or many at once."""
 
-import json
 from collections.abc import Iterator, Sequence
-from dataclasses import asdict
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from workbooks.progress import progress
-from workbooks.statuses import DATA_PROBLEMS, WRONG_CALL, rows_told
+from workbooks.statuses import DATA_PROBLEMS, rows_told
+from workbooks.told import tell_all, tell_one
 
 if TYPE_CHECKING:
     from workbooks.batch import BatchReport
@@ -74,16 +73,13 @@ def fill(
                 backup=task.backup,
             )
             tell(task.logbook)
-        _print(report, as_json)
+        tell_one(report, as_json, _print)
         if report.has_problems:
             raise typer.Exit(DATA_PROBLEMS)
         return
     with progress(len(tasks), "filling") as tell:
         reports = batch.fill_all(tasks, tell)
-    reports.passed_over = [str(path) for path in passed_over]
-    _print_all(reports, as_json)
-    if reports.has_problems:
-        raise typer.Exit(DATA_PROBLEMS if reports.logbooks else WRONG_CALL)
+    tell_all(reports, passed_over, as_json, _print_apart, "filled", _summary)
 
 
 def _targets(
@@ -110,28 +106,16 @@ def _targets(
         yield path, target
 
 
-def _print(report: "Report", as_json: bool) -> None:
-    if as_json:
-        print(json.dumps(asdict(report), ensure_ascii=False, indent=1))
-    else:
-        _print_report(report)
+def _print_apart(report: "Report") -> None:
+    _print(report)
+    print()
 
 
-def _print_all(reports: "BatchReport", as_json: bool) -> None:
-    if as_json:
-        print(json.dumps(asdict(reports), ensure_ascii=False, indent=1))
-        return
-    for report in reports.logbooks:
-        _print_report(report)
-        print()
-    for failure in reports.failed:
-        print(f"{failure.logbook}: not filled, {failure.sentence}")
-    for path in reports.passed_over:
-        print(f"{path}: passed over, it is a backup or was written by fill")
-    print(f"{len(reports.logbooks)} filled, {len(reports.failed)} not filled")
+def _summary(reports: "BatchReport") -> str:
+    return f"{len(reports.logbooks)} filled, {len(reports.failed)} not filled"
 
 
-def _print_report(report: "Report") -> None:
+def _print(report: "Report") -> None:
     print(f"{report.logbook} by the recipe {report.recipe} → {report.output}")
     if report.backup:
         print(f"what was there is kept as {report.backup}")
