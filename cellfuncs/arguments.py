@@ -7,8 +7,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from cellfuncs.catalogue import Argument, Choice, Function, Number, Word, find, is_empty, shown
-from cellfuncs.errors import InputError, MissingInput
+from cellfuncs.catalogue import Argument, Choice, Function, Number, Word, find, shown
+from cellfuncs.errors import InputError, MissingInput, is_empty
 
 Floats = NDArray[np.float64]
 

@@ -11,27 +11,22 @@ from dataclasses import dataclass, field, replace
 from datetime import datetime
 from functools import lru_cache
 from math import inf, isfinite, nextafter
-from typing import Any, ClassVar, Final
+from typing import Any, Final
 
 import numpy as np
 
-from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, near_matches
+from cellfuncs.errors import (
+    CellError,
+    DomainError,
+    InputError,
+    MissingInput,
+    is_empty,
+    near_matches,
+)
 from cellfuncs.physics.expansion import Cosmology, cosmology_from
 from cellfuncs.symbols import Expr, node
 
 REQUIRED: Final = inspect.Parameter.empty
-
-
-def is_empty(value: Any) -> bool:
-    """Tell whether a value is what an empty cell gives: None, NaN or blank text."""
-    if value is None or (isinstance(value, str) and not value.strip()):
-        return True
-    if value is np.ma.masked:
-        return True
-    try:
-        return bool(value != value)
-    except (TypeError, ValueError, ArithmeticError):
-        return False
 
 
 def shown(value: Any) -> str:
@@ -67,7 +62,7 @@ class Argument(ABC):
 
     def is_column(self, value: Any) -> bool:
         """Tell whether the value holds one element a row rather than one for all."""
-        return isinstance(value, (np.ndarray, list, tuple, range)) and np.ndim(_as_array(value)) > 0
+        return isinstance(value, (np.ndarray, list, tuple, range)) and np.ndim(as_array(value)) > 0
 
     def symbol(self, value: Expr) -> Any:
         """Return what stands for the parsed value where a cell holds the argument."""
@@ -88,32 +83,9 @@ class Numeric(Argument):
 
     unit: str = ""
 
+    @abstractmethod
     def column(self, value: Any) -> tuple[Any, CellError | None]:
         """Return float64 with NaN where nothing can be computed, and the first InputError met."""
-        array = _as_array(value)
-        if array.dtype.kind in self.kinds:
-            return self._of_array(array), None
-        wrong: CellError | None = None
-        numbers = np.full(array.shape, np.nan)
-        flat = numbers.reshape(-1)
-        for index, each in enumerate(array.reshape(-1).tolist()):
-            try:
-                flat[index] = self.parsed(self._filled(each))
-            except InputError as error:
-                wrong = wrong or error
-            except CellError:
-                pass
-        return numbers, wrong
-
-    kinds: ClassVar[str] = "fiu"
-    """The kinds of numpy's arrays that are taken at once, as numpy has them by a letter"""
-
-    @abstractmethod
-    def _of_array(self, array: Any) -> Any:
-        """Return such an array as the formula takes it, NaN where an element is not allowed."""
-
-    def _filled(self, value: Any) -> Any:
-        return self.default if self.optional and left_out(value) else value
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -177,12 +149,28 @@ class Number(Numeric):
         except (TypeError, ValueError, ArithmeticError):
             raise InputError(f"{self.name} is {shown(value)}, not a number") from None
 
-    def _of_array(self, array: Any) -> Any:
-        with np.errstate(all="ignore"):
-            numbers = array.astype(np.float64)
-        low, high = self.open_interval
-        good = (numbers > low) & (numbers < high)
-        return numbers if good.all() else np.where(good, numbers, np.nan)
+    def column(self, value: Any) -> tuple[Any, CellError | None]:
+        array = as_array(value)
+        if array.dtype.kind in "fiu":
+            with np.errstate(all="ignore"):
+                numbers = array.astype(np.float64)
+            low, high = self.open_interval
+            good = (numbers > low) & (numbers < high)
+            return numbers if good.all() else np.where(good, numbers, np.nan), None
+        wrong: CellError | None = None
+        numbers = np.full(array.shape, np.nan)
+        flat = numbers.reshape(-1)
+        for index, each in enumerate(array.reshape(-1).tolist()):
+            try:
+                flat[index] = self.parsed(self._filled(each))
+            except InputError as error:
+                wrong = wrong or error
+            except CellError:
+                pass
+        return numbers, wrong
+
+    def _filled(self, value: Any) -> Any:
+        return self.default if self.optional and left_out(value) else value
 
     @property
     def open_interval(self) -> tuple[float, float]:
@@ -317,7 +305,7 @@ def _without_masks(value: Any) -> Any:
     ]
 
 
-def _as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
+def as_array(value: Any) -> np.ndarray[Any, np.dtype[Any]]:
     if isinstance(value, np.ndarray):
         return value
     value = _without_masks(value)
@@ -493,7 +481,7 @@ class Function:
                 shapes.append(numbers.shape)
                 ready.append(numbers)
             else:
-                array = _as_array(value)
+                array = as_array(value)
                 shapes.append(array.shape)
                 words.append((position, array))
                 ready.append(array)
@@ -584,7 +572,7 @@ class Function:
     def row(self, values: Sequence[Any], shape: tuple[int, ...], index: int) -> list[Any]:
         """Return the arguments of one element, counted row by row, of a call with columns."""
         return [
-            np.broadcast_to(_as_array(value), shape).reshape(-1)[index]
+            np.broadcast_to(as_array(value), shape).reshape(-1)[index]
             if argument.is_column(value)
             else value
             for argument, value in zip(self.arguments, values, strict=True)

@@ -2,6 +2,9 @@
 
 from collections.abc import Iterable
 from difflib import get_close_matches
+from typing import Any
+
+import numpy as np
 
 
 class CellError(ValueError):
@@ -30,6 +33,18 @@ class MissingInput(CellError):
 
 class NotFound(MissingInput):
     """Nothing in a table answers the question."""
+
+
+def is_empty(value: Any) -> bool:
+    """Tell whether a value is what an empty cell gives: None, NaN or blank text."""
+    if value is None or (isinstance(value, str) and not value.strip()):
+        return True
+    if value is np.ma.masked:
+        return True
+    try:
+        return bool(value != value)
+    except (TypeError, ValueError, ArithmeticError):
+        return False
 
 
 def near_matches(text: str, known: Iterable[str], most: int = 4) -> str:

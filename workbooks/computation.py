@@ -6,8 +6,8 @@ from typing import Any
 
 import numpy as np
 
-from cellfuncs.catalogue import is_empty, shown
-from cellfuncs.errors import CellError, InputError, MissingInput
+from cellfuncs.catalogue import shown
+from cellfuncs.errors import CellError, InputError, MissingInput, is_empty
 from cellfuncs.families import sky
 from cellfuncs.physics import lines
 from cellfuncs.physics.expansion import Cosmology

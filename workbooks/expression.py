@@ -11,14 +11,8 @@ from typing import Any, Final
 import numpy as np
 
 from cellfuncs.bridges.formula import SETTINGS_COSMOLOGY, Guarded, any_of, guarded
-from cellfuncs.catalogue import (
-    Argument,
-    CosmologySet,
-    Function,
-    Number,
-    is_empty,
-)
-from cellfuncs.errors import CellError, DomainError, InputError, MissingInput
+from cellfuncs.catalogue import Argument, CosmologySet, Function, Number
+from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, is_empty
 from cellfuncs.families.sky import Moment, moment_of_number
 from cellfuncs.physics.expansion import Cosmology
 from cellfuncs.symbols import Expr, build, name, node

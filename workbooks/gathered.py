@@ -13,8 +13,8 @@ import numpy as np
 from cellfuncs.arguments import MeasuredLines, Sample
 from cellfuncs.bridges.formula import Guarded
 from cellfuncs.bridges.sample import guarded_sample
-from cellfuncs.catalogue import Argument, Function, is_empty
-from cellfuncs.errors import CellError, MissingInput
+from cellfuncs.catalogue import Argument, Function
+from cellfuncs.errors import CellError, MissingInput, is_empty
 from cellfuncs.symbols import NotTraceable
 from workbooks.expression import (
     TEXT,

@@ -2,8 +2,7 @@
 
 from typing import Any
 
-from cellfuncs.catalogue import is_empty
-from cellfuncs.errors import CellError, MissingInput
+from cellfuncs.errors import CellError, MissingInput, is_empty
 from workbooks.computation import Computation
 from workbooks.gathered import of_group
 from workbooks.logbook import ErrorValue, Logbook

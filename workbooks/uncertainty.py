@@ -13,8 +13,8 @@ from typing import Any, TypeAlias
 import numpy as np
 
 from cellfuncs.bridges.formula import Guarded, guarded
-from cellfuncs.catalogue import Numeric, is_empty
-from cellfuncs.errors import CellError, DomainError, InputError, MissingInput
+from cellfuncs.catalogue import Numeric
+from cellfuncs.errors import CellError, DomainError, InputError, MissingInput, is_empty
 from cellfuncs.propagation import combined, slope_function
 from cellfuncs.symbols import Expr, Real, kept, log, node
 from workbooks.expression import (

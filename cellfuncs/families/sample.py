@@ -3,8 +3,8 @@
 from typing import Any
 
 from cellfuncs.arguments import Cells, FunctionName, Sample, in_rows, part_of
-from cellfuncs.catalogue import Choice, Number, Numeric, Truth, function, is_empty
-from cellfuncs.errors import InputError
+from cellfuncs.catalogue import Choice, Number, Numeric, Truth, function
+from cellfuncs.errors import InputError, is_empty
 from cellfuncs.physics import statistics
 from cellfuncs.propagation import error_function
 from cellfuncs.symbols import Real, choose, either, within

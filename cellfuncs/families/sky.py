@@ -4,11 +4,11 @@ Angles are degrees, right ascension too, in the ICRS; longitude is positive to t
 """
 
 from dataclasses import dataclass
-from typing import Any, ClassVar
+from typing import Any
 
-from cellfuncs.catalogue import Argument, Choice, Number, Numeric, Truth, function, is_empty, shown
+from cellfuncs.catalogue import Argument, Choice, Number, Numeric, Truth, as_array, function, shown
 from cellfuncs.constants import LIGHT_SPEED
-from cellfuncs.errors import InputError, MissingInput
+from cellfuncs.errors import CellError, InputError, MissingInput, is_empty
 from cellfuncs.physics import angles, earth, frames, times
 from cellfuncs.symbols import Expr, Real, choose, either, kept, node, within
 
@@ -38,15 +38,13 @@ class Moment(Numeric):
         day, fraction = times.utc_parts(value, self.name)
         return (day - earth.EPOCH) + fraction
 
-    kinds: ClassVar[str] = "fiuM"
-
     def symbol(self, value: Expr) -> Expr:
         # what is marked to be kept is a moment already
         return value if value.operation == "kept" else Expr("reading", node("moment"), value)
 
-    def _of_array(self, array: Any) -> Any:
-        day, fraction, _ = times.utc_columns(array, self.name)
-        return (day - earth.EPOCH) + fraction
+    def column(self, value: Any) -> tuple[Any, CellError | None]:
+        day, fraction, wrong = times.utc_columns(as_array(value), self.name)
+        return (day - earth.EPOCH) + fraction, wrong
 
 
 def moment_of_number(value: Expr) -> Real:

@@ -18,7 +18,7 @@ import erfa
 import numpy as np
 from numpy.typing import NDArray
 
-from cellfuncs.errors import CellError, DomainError, InputError
+from cellfuncs.errors import CellError, DomainError, InputError, is_empty
 
 FIRST_DAY: Final = 2436934.5
 """1960-01-01, the first day of UTC"""
@@ -121,7 +121,7 @@ def utc_columns(
             parts.append(utc_parts(value, name))
         except CellError as error:
             parts.append((np.nan, np.nan))
-            if wrong is None and isinstance(error, InputError) and not _is_empty(value):
+            if wrong is None and isinstance(error, InputError) and not is_empty(value):
                 wrong = error
     days, fractions = np.array(parts, dtype=np.float64).reshape(-1, 2).T
     return days.reshape(array.shape), fractions.reshape(array.shape), wrong
@@ -352,12 +352,6 @@ def _no_moment(value: Any, name: str) -> CellError:
         elif re.fullmatch(r"[0-9]+(?:[.,][0-9]*)?", value):
             words = f"a serial or a Julian date must be a number, not text; else {words}"
     return InputError(f"{name} is {_shown(value)}, not a date and time; {words}")
-
-
-def _is_empty(value: Any) -> bool:
-    if isinstance(value, str):
-        return not value.strip()
-    return value is None or value is np.ma.masked or bool(value != value)
 
 
 def _as_array(values: Sequence[Any]) -> NDArray[Any]:
