@@ -23,7 +23,7 @@ MOST_RATIO = 200
 RATIO_MATTERS_FROM = 16 << 20
 
 CHUNK: Final = 1 << 20
-QUICK: Final = 3
+QUICK: Final = 2
 CFB_MAGIC = bytes.fromhex("d0cf11e0a1b11ae1")
 ENCRYPTED_FLAG = 0x1
 ZIP64_FIELD = b"\x01\x00"
@@ -209,7 +209,7 @@ class Archive:
                 if content is None:
                     chunks = self.chunks(old.filename)
                 else:
-                    # A third as much work as the usual level, for a tenth more bytes.
+                    # A third as much work as the usual level, for a seventh more bytes.
                     info._compresslevel = QUICK  # type: ignore[attr-defined]
                     chunks = [content] if isinstance(content, bytes) else content()
                 large = old.file_size > MOST_UNPACKED // 2

@@ -1,16 +1,32 @@
 """Cells exchanged in the content of an .ods, every other byte kept."""
 
 import re
-from collections.abc import Collection, Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
+from functools import cached_property, lru_cache
 from pathlib import Path
 from typing import Final
 
 from workbooks.cells import LAST_ROW, ErrorValue, LogbookError, Value
 from workbooks.edits import Edits
-from workbooks.ods_content import CALC, FORMULA, OFFICE, TABLE, TEXT, Cell, TableRow, Walk
+from workbooks.ods_cells import CALC, FORMULA, OFFICE, TABLE, TEXT, Cell
+from workbooks.ods_content import Row, Walk
 from workbooks.xml_check import TAG
 
 _REFUSED = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\ud800-\udfff\ufffe\uffff]")
+
+
+@lru_cache(maxsize=1024)
+def _paragraphs_of(text: str, prefix: str) -> bytes:
+    escaped = text.replace("&", "&amp;").replace("<", "&lt;").replace(">", "&gt;")
+    # White space counts as one blank, and as none at an end (ODF 1.3 part 3, 6.1.2).
+    written = re.sub(
+        r"^ +| +$| {2,}",
+        lambda blanks: f'<{prefix}:s {prefix}:c="{len(blanks[0])}"/>',
+        escaped,
+        flags=re.MULTILINE,
+    ).replace("\t", f"<{prefix}:tab/>")
+    lines = re.split("\r\n|\r|\n", written)
+    return "".join(f"<{prefix}:p>{line}</{prefix}:p>" for line in lines).encode()
 
 
 class Writer:
@@ -27,9 +43,10 @@ class Writer:
         self.patches: list[tuple[int, int, bytes]] = []
         self.done = 0
         """Up to where the file has been dealt with"""
-        self.waiting: list[tuple[str, TableRow]] = []
+        self.waiting: list[tuple[str, Row]] = []
         self.last: tuple[str, int, int] | None = None
         """The last row of the table that is going by: its table, last number and end"""
+        self._known: dict[tuple[bytes, re.Pattern[bytes]], bytes] = {}
 
     def pieces(self, chunks: Iterator[bytes]) -> Iterator[bytes]:
         for chunk in chunks:
@@ -54,7 +71,7 @@ class Writer:
         self.patches.clear()
         return b"".join(out)
 
-    def _row(self, table: str, row: TableRow) -> None:
+    def _row(self, table: str, row: Row) -> None:
         edits = self.edits.get(table)
         if edits is None:
             self.done = row.end
@@ -94,13 +111,13 @@ class Writer:
                 number = new
             if rows:
                 self.patches.append((end, end, b"".join(rows)))
-        self.done = self.walk.parser.CurrentByteIndex
+        self.done = self.walk.at
 
-    def _split(self, row: TableRow, end: int, numbers: list[int], edits: Edits) -> Iterator[bytes]:
+    def _split(self, row: Row, end: int, numbers: list[int], edits: Edits) -> Iterator[bytes]:
         """Yield a row, or what is left of one that was repeated, with some of its cells set."""
         tag = self._tag(row.start)
         inner = self._bytes(row.start + len(tag), row.end) if not tag.endswith(b"/>") else b""
-        plain = self._without(tag, ("table:number-rows-repeated",))
+        plain = self._without(tag, self._rows_repeated)
         plain = plain[:-2] + b">" if plain.endswith(b"/>") else plain
         number = row.number
         for edited in numbers:
@@ -114,30 +131,37 @@ class Writer:
         if left:
             yield self._repeating(plain, "rows", left) + inner + self._row_end
 
-    def _cells(self, row: TableRow, tag: bytes, wanted: list[tuple[int, Value]]) -> Iterator[bytes]:
+    def _cells(self, row: Row, tag: bytes, wanted: list[tuple[int, Value]]) -> Iterator[bytes]:
         at = row.start + len(tag)
-        column = 1
-        for cell in row.cells:
+        column = wanted[0][0]
+        done, count = 0, len(wanted)
+        for cell in row.cells_from(column):
             column = cell.column + cell.repeated
-            here = [each for each in wanted if cell.column <= each[0] < column]
-            if not here:
+            if wanted[done][0] >= column:
                 continue
             yield self._bytes(at, cell.start)
-            at = self._after(cell.start, cell.end)
             tag_of_cell = self._tag(cell.start)
-            plain = self._without(tag_of_cell, ("table:number-columns-repeated",))
-            rest = self._bytes(cell.start + len(tag_of_cell), at)
+            inside = cell.start + len(tag_of_cell)
+            at = inside if tag_of_cell.endswith(b"/>") else cell.end + len(self._tag(cell.end))
+            plain = self._without(tag_of_cell, self._columns_repeated)
+            rest = self._bytes(inside, at)
             place = cell.column
-            for number, value in here:
+            while done < count and wanted[done][0] < column:
+                number, value = wanted[done]
                 if number > place:
                     yield self._repeating(plain, "columns", number - place) + rest
                 yield self._edited(cell, plain, at, value)
                 place = number + 1
+                done += 1
             if place < column:
                 yield self._repeating(plain, "columns", column - place) + rest
+            if done == count:
+                break
         if not tag.endswith(b"/>"):
             yield self._bytes(at, row.end)
-        yield from self._beyond([each for each in wanted if each[0] >= column], column)
+        if done < count:
+            last = row.cells[-1] if row.cells else None
+            yield from self._beyond(wanted[done:], last.column + last.repeated if last else 1)
 
     def _beyond(self, wanted: list[tuple[int, Value]], column: int) -> Iterator[bytes]:
         """Yield cells that come after a row's last one."""
@@ -152,11 +176,7 @@ class Writer:
             column = number + 1
 
     def _edited(self, cell: Cell, plain: bytes, end: int, value: Value) -> bytes:
-        gone = [
-            *(f"office:{name}" for name in _VALUE_ATTRIBUTES),
-            "calcext:value-type",
-            *(() if cell.has_formula else ("table:formula",)),
-        ]
+        gone = self._value if cell.has_formula else self._value_and_formula
         tag = self._without(plain, gone)
         attributes, paragraphs = self._stored(value, has_formula=cell.has_formula)
         if tag.endswith(b"/>"):
@@ -177,46 +197,42 @@ class Writer:
 
     def _stored(self, value: Value, *, has_formula: bool) -> tuple[bytes, bytes]:
         """Return the attributes and the paragraphs of a cell that holds a value."""
-        office = self.walk.prefixes[OFFICE].encode()
         match value:
             case None:
                 return b"", b""
             case bool():
                 word = b"true" if value else b"false"
-                attributes = b' %b:value-type="boolean" %b:boolean-value="%b"' % (
-                    office,
-                    office,
-                    word,
+                return self._typed("boolean", b"boolean-value", word), self._paragraphs(
+                    word.decode().upper()
                 )
-                kind, text = b"boolean", "TRUE" if value else "FALSE"
             case ErrorValue():
-                attributes = b' %b:value-type="string" %b:string-value=""' % (office, office)
-                if not has_formula and FORMULA in self.walk.prefixes:
-                    attributes = (
-                        b' %b:formula="%b:=%b"'
-                        % (
-                            self.walk.prefixes[TABLE].encode(),
-                            self.walk.prefixes[FORMULA].encode(),
-                            value.text.encode(),
-                        )
-                        + attributes
-                    )
-                kind, text = b"error", value.text
+                attributes = self._typed("string", b"string-value", b"", shown="error")
+                formula = self.walk.prefixes.get(FORMULA)
+                if not has_formula and formula:
+                    text = f' {self._prefix(TABLE)}:formula="{formula}:={value.text}"'
+                    attributes = text.encode() + attributes
+                return attributes, self._paragraphs(value.text)
             case str():
-                attributes = b' %b:value-type="string"' % office
-                kind, text = b"string", value
-            case _:
-                text = repr(float(value)).removesuffix(".0")
-                attributes = b' %b:value-type="float" %b:value="%b"' % (
-                    office,
-                    office,
-                    text.encode(),
-                )
-                kind = b"float"
-        if CALC in self.walk.prefixes:
-            calc = self.walk.prefixes[CALC].encode()
-            attributes += b' %b:value-type="%b"' % (calc, kind)
-        return attributes, self._paragraphs(text)
+                return self._typed("string"), self._paragraphs(value)
+        number = repr(float(value)).removesuffix(".0").encode()
+        # what a number is written with needs no look at its characters
+        attributes, paragraph = self._of_number
+        return attributes % number, paragraph % number
+
+    def _typed(self, kind: str, name: bytes = b"", value: bytes = b"", *, shown: str = "") -> bytes:
+        """Return the attributes that say what a cell holds, and the value in one of its own."""
+        office, calc = self._prefix(OFFICE).encode(), self.walk.prefixes.get(CALC)
+        attributes = b' %b:value-type="%b"' % (office, kind.encode())
+        if name:
+            attributes += b' %b:%b="%b"' % (office, name, value)
+        if calc:
+            attributes += f' {calc}:value-type="{shown or kind}"'.encode()
+        return attributes
+
+    @cached_property
+    def _of_number(self) -> tuple[bytes, bytes]:
+        """The patterns of a number's attributes and paragraph."""
+        return self._typed("float", b"value", b"%b"), self._paragraphs("%b")
 
     def _paragraphs(self, text: str) -> bytes:
         if found := _REFUSED.search(text):
@@ -224,16 +240,7 @@ class Writer:
         prefix = self.walk.prefixes.get(TEXT)
         if prefix is None:
             raise LogbookError(f"{self.path} has no place for text")
-        escaped = text.replace("&", "&amp;").replace("<", "&lt;").replace(">", "&gt;")
-        # White space counts as one blank, and as none at an end (ODF 1.3 part 3, 6.1.2).
-        written = re.sub(
-            r"^ +| +$| {2,}",
-            lambda blanks: f'<{prefix}:s {prefix}:c="{len(blanks[0])}"/>',
-            escaped,
-            flags=re.MULTILINE,
-        ).replace("\t", f"<{prefix}:tab/>")
-        lines = re.split("\r\n|\r|\n", written)
-        return "".join(f"<{prefix}:p>{line}</{prefix}:p>" for line in lines).encode()
+        return _paragraphs_of(text, prefix)
 
     # -- bytes
 
@@ -269,24 +276,63 @@ class Writer:
         at = -2 if tag.endswith(b"/>") else -1
         return tag[:at] + attribute + tag[at:]
 
-    def _without(self, tag: bytes, names: Collection[str]) -> bytes:
-        """Return a tag without some attributes, which are named by the usual prefixes."""
-        for name in names:
-            usual, _, local = name.partition(":")
-            prefix = self.walk.prefixes.get(_USUAL[usual])
-            if prefix:
-                key = re.escape(f"{prefix}:{local}".encode())
-                tag = re.sub(rb"\s+" + key + rb"""\s*=\s*(?:"[^"]*"|'[^']*')""", b"", tag)
-        return tag
+    def _prefix(self, namespace: str) -> str:
+        prefix = self.walk.prefixes.get(namespace)
+        if prefix is None:
+            raise LogbookError(f"{self.path} has no place for values")
+        return prefix
+
+    def _without(self, tag: bytes, attributes: re.Pattern[bytes]) -> bytes:
+        """Return a tag without some attributes."""
+        key = tag, attributes
+        known = self._known.get(key)
+        if known is None:
+            if len(self._known) > MOST_KNOWN:
+                self._known.clear()
+            known = self._known[key] = attributes.sub(b"", tag)
+        return known
+
+    def _attributes(self, names: Iterable[tuple[str, str]]) -> re.Pattern[bytes]:
+        """Return the pattern of attributes by namespace and name."""
+        prefixes = self.walk.prefixes
+        spelled = "|".join(
+            re.escape(f"{prefixes[namespace]}:{local}")
+            for namespace, local in names
+            if namespace in prefixes
+        )
+        return re.compile(rf"""\s+(?:{spelled or "(?!)"})\s*=\s*(?:"[^"]*"|'[^']*')""".encode())
+
+    @cached_property
+    def _rows_repeated(self) -> re.Pattern[bytes]:
+        return self._attributes([(TABLE, "number-rows-repeated")])
+
+    @cached_property
+    def _columns_repeated(self) -> re.Pattern[bytes]:
+        return self._attributes([(TABLE, "number-columns-repeated")])
+
+    @cached_property
+    def _value(self) -> re.Pattern[bytes]:
+        return self._attributes(_VALUE_ATTRIBUTES)
+
+    @cached_property
+    def _value_and_formula(self) -> re.Pattern[bytes]:
+        return self._attributes([*_VALUE_ATTRIBUTES, (TABLE, "formula")])
 
 
-_USUAL: Final = {"table": TABLE, "office": OFFICE, "calcext": CALC}
+MOST_KNOWN: Final = 10_000
+
 _VALUE_ATTRIBUTES: Final = (
-    "value-type",
-    "value",
-    "string-value",
-    "boolean-value",
-    "date-value",
-    "time-value",
-    "currency",
+    *(
+        (OFFICE, name)
+        for name in (
+            "value-type",
+            "value",
+            "string-value",
+            "boolean-value",
+            "date-value",
+            "time-value",
+            "currency",
+        )
+    ),
+    (CALC, "value-type"),
 )

@@ -5,24 +5,22 @@ from bisect import bisect_left
 from collections.abc import Callable, Collection, Iterator, Mapping
 from functools import cached_property
 from pathlib import Path
-from typing import Final
+from typing import Any, Final
 
 from workbooks.archive import Archive
 from workbooks.cells import LAST_COLUMN, LAST_ROW, Area, LogbookError, cell_name
 from workbooks.edits import Edits
 from workbooks.logbook import Logbook
-from workbooks.ods_content import (
-    COLUMNS_SPANNED,
-    OFFICE,
-    ROWS_SPANNED,
-    Cell,
-    TableRow,
-    Walk,
-)
+from workbooks.ods_cells import COLUMNS_SPANNED, ROWS_SPANNED, VALUE_TYPE, Cell
+from workbooks.ods_content import Row, Walk
+from workbooks.ods_rows import PlainRow
 from workbooks.ods_writer import Writer
 from workbooks.sheet import HEADER_ROWS, MOST_CELLS, Gathered, Sheet
 
 KIND: Final = "application/vnd.oasis.opendocument.spreadsheet"
+
+BLOCK: Final = 2000
+"""Rows that are laid out at a time"""
 
 
 class _Enough(Exception):
@@ -35,8 +33,9 @@ class OdsLogbook(Logbook):
     def __init__(self, path: Path) -> None:
         """Open and check `path`; raise LogbookError for anything that is not a sound .ods."""
         super().__init__(path)
-        self._archive = Archive(path, ".ods")
-        archive = self._archive
+        self.archive = Archive(path, ".ods")
+        """The parts of the file, as they were when it was opened"""
+        archive = self.archive
         if not archive.has("mimetype") or not archive.has("content.xml"):
             raise LogbookError(f"{path} is a zip archive but holds no .ods spreadsheet")
         kind = b"".join(archive.chunks("mimetype"))[:200].decode("latin-1").strip()
@@ -51,11 +50,11 @@ class OdsLogbook(Logbook):
         self._take_stock()
 
     def _take_stock(self) -> None:
-        def note(table: str, row: TableRow) -> None:
+        def note(table: str, row: Row) -> None:
             stock = self._stock.setdefault(table, _Stock())
             stock.note(row, self.path)
 
-        walk = self._walked(note)
+        walk = self._walked(note, check=True)
         if len(set(walk.tables)) < len(walk.tables):
             raise LogbookError(f"{self.path} holds two sheets of one name")
         if not walk.tables:
@@ -63,9 +62,9 @@ class OdsLogbook(Logbook):
         self._stock = {name: self._stock.get(name, _Stock()) for name in walk.tables}
         self._named = walk.names
 
-    def _walked(self, take: Callable[[str, TableRow], None]) -> Walk:
-        walk = Walk(self.path, take)
-        for chunk in self._archive.chunks("content.xml"):
+    def _walked(self, take: Callable[[str, Row], None], *, check: bool = False) -> Walk:
+        walk = Walk(self.path, take, check=check)
+        for chunk in self.archive.chunks("content.xml"):
             walk.feed(chunk)
         walk.feed(b"", True)
         return walk
@@ -89,10 +88,10 @@ class OdsLogbook(Logbook):
                 found[name] = (sheet, area.first_row, area.first_column)
         return found
 
-    def read(self, name: str, take: Callable[[TableRow], bool]) -> None:
+    def read(self, name: str, take: Callable[[Row], bool]) -> None:
         """Give the rows of a sheet to `take`, until it says that it has enough."""
 
-        def pass_on(table: str, row: TableRow) -> None:
+        def pass_on(table: str, row: Row) -> None:
             if table == name and not take(row):
                 raise _Enough
 
@@ -108,10 +107,10 @@ class OdsLogbook(Logbook):
             if isinstance(sheet, OdsSheet) and sheet.is_edited
         }
         replaced = {"content.xml": lambda: self._edited(edits)} if edits else {}
-        self._archive.save(Path(path), replaced, overwrite=overwrite, backup=backup)
+        self.archive.save(Path(path), replaced, overwrite=overwrite, backup=backup)
 
     def _edited(self, edits: Mapping[str, Edits]) -> Iterator[bytes]:
-        return Writer(self.path, edits).pieces(self._archive.chunks("content.xml"))
+        return Writer(self.path, edits).pieces(self.archive.chunks("content.xml"))
 
 
 class _Stock:
@@ -123,26 +122,36 @@ class _Stock:
         self.merged: list[Area] = []
         self._cells = 0
 
-    def note(self, row: TableRow, path: Path) -> None:
+    def note(self, row: Row, path: Path) -> None:
+        if isinstance(row, PlainRow) and not row.shape.has_formulas:
+            shape = row.shape
+            if shape.count:
+                self._note_filled(row, 1, shape.last_column, shape.count, path)
+            return
         for cell in row.cells:
             if COLUMNS_SPANNED in cell.attributes or ROWS_SPANNED in cell.attributes:
                 self._note_merged(row.number, cell)
-            if f"{OFFICE} value-type" not in cell.attributes and not cell.has_formula:
+            if VALUE_TYPE not in cell.attributes and not cell.has_formula:
                 continue
-            last_row, last_column = row.number + row.repeated - 1, cell.column + cell.repeated - 1
-            self._cells += row.repeated * cell.repeated
-            if last_row > LAST_ROW or last_column > LAST_COLUMN or self._cells > MOST_CELLS:
-                raise LogbookError(
-                    f"{path} repeats the cell {cell_name(row.number, cell.column)} up to row "
-                    f"{last_row:,}, column {last_column:,}, more than a sheet can be worth"
-                )
-            self.height = max(self.height, last_row)
-            self.width = max(self.width, last_column)
+            last_column = cell.column + cell.repeated - 1
+            self._note_filled(row, cell.column, last_column, cell.repeated, path)
             if cell.has_formula:
                 for column in range(cell.column, last_column + 1):
                     self.formulas.setdefault(column, array("L")).extend(
-                        range(row.number, last_row + 1)
+                        range(row.number, row.number + row.repeated)
                     )
+
+    def _note_filled(self, row: Row, column: int, last_column: int, count: int, path: Path) -> None:
+        """Take in `count` cells of a row, which end in `last_column`."""
+        last_row = row.number + row.repeated - 1
+        self._cells += row.repeated * count
+        if last_row > LAST_ROW or last_column > LAST_COLUMN or self._cells > MOST_CELLS:
+            raise LogbookError(
+                f"{path} repeats the cell {cell_name(row.number, column)} up to row "
+                f"{last_row:,}, column {last_column:,}, more than a sheet can be worth"
+            )
+        self.height = max(self.height, last_row)
+        self.width = max(self.width, last_column)
 
     def _note_merged(self, row: int, cell: Cell) -> None:
         rows, columns = (
@@ -182,8 +191,25 @@ class OdsSheet(Sheet):
     def _gather(self, wanted: Collection[int] | None, most_rows: int = LAST_ROW) -> Gathered:
         gathered = Gathered(wanted)
         most = min(most_rows, self.height) if most_rows != HEADER_ROWS else HEADER_ROWS
+        asked = None if wanted is None else frozenset(wanted)
+        block: list[list[Any]] = []
+        first = 1
 
-        def take(row: TableRow) -> bool:
+        def take_block() -> None:
+            width = max(map(len, block), default=0)
+            if width:
+                gathered.add(first, 1, [row + [None] * (width - len(row)) for row in block])
+            block.clear()
+
+        def take(row: Row) -> bool:
+            nonlocal first
+            if isinstance(row, PlainRow) and row.repeated == 1:
+                if not block or row.number != first + len(block) or len(block) >= BLOCK:
+                    take_block()
+                    first = row.number
+                block.append(row.values(asked))
+                return row.number < most
+            take_block()
             values = [
                 (cell.column, cell.repeated, value)
                 for cell in row.cells
@@ -197,6 +223,7 @@ class OdsSheet(Sheet):
             return row.number + row.repeated <= most
 
         self._logbook.read(self.name, take)
+        take_block()
         return gathered
 
     @property

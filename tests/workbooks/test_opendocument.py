@@ -26,9 +26,12 @@ sys.path.insert(0, str(Path(__file__).parent))
 
 from logs import HEADERS, ROWS, by_libreoffice, recipe, redshift, run, write_xlsx
 
+from workbooks.build import build
 from workbooks.fill import fill
 from workbooks.logbook import ErrorValue, Logbook, LogbookError, Value
+from workbooks.ods_content import Walk
 from workbooks.opendocument import KIND
+from workbooks.recipe import load
 
 T = "{urn:oasis:names:tc:opendocument:xmlns:table:1.0}"
 O = "{urn:oasis:names:tc:opendocument:xmlns:office:1.0}"  # noqa: E741
@@ -400,3 +403,135 @@ def test_the_command_fills_an_ods_in_place(ods: Path, tmp_path: Path) -> None:
     assert (ran.returncode, ran.stderr) == (1, "")
     assert path.with_name("night.before-fill.ods").read_bytes() == ods.read_bytes()
     assert Logbook.open(path).sheet("Night").rows[0][-3] == "Redshift"
+
+
+# ---- rows taken in at one look, and with care
+
+
+def with_care(content: bytes) -> bytes:
+    """Put a comment before all tables: after one, every row is looked at cell by cell."""
+    return content.replace(b"<office:body>", CAREFUL + b"<office:body>", 1)
+
+
+CAREFUL = b"<!-- by hand -->"
+
+
+def seen(path: Path) -> Any:
+    """Return all that is read of a logbook, or the reason why it is refused."""
+    try:
+        book = Logbook.open(path)
+        return [
+            (
+                name,
+                sheet.height,
+                sheet.width,
+                sheet.rows,
+                sheet.columns({3, 8}),
+                sheet.top,
+                sorted(sheet.formula_columns),
+                sheet.merged,
+                sheet.last_used_column(2),
+                [sheet.has_formula(row, 8) for row in range(1, 12)],
+            )
+            for name in book.sheet_names
+            for sheet in (book.sheet(name), Logbook.open(path).sheet(name))
+        ], book.named_cells
+    except LogbookError as error:
+        return str(error).replace(str(path), "")
+
+
+@pytest.fixture(scope="module")
+def two_ways(ods: Path, tmp_path_factory: pytest.TempPathFactory) -> list[tuple[Path, Path]]:
+    """Files of LibreOffice, each as it is and as one that must be read with care."""
+    folder = tmp_path_factory.mktemp("ways")
+    template = folder / "template.xlsx"
+    build(load("line-log"), template, rows=40)
+    found = []
+    for path in (ods, by_libreoffice(template, "ods", folder)):
+        content = parts(path)["content.xml"]
+        careful = rewritten(
+            path, folder / f"careful-{path.name}", {"content.xml": with_care(content)}
+        )
+        found.append((path, careful))
+    return found
+
+
+def test_both_ways_read_the_same(two_ways: list[tuple[Path, Path]]) -> None:
+    for quick, careful in two_ways:
+        assert seen(quick) == seen(careful)
+        assert len(seen(quick)[0]) > 2
+
+
+@pytest.mark.parametrize("size", [1, 7, 1000, 60_000])
+def test_rows_in_pieces_of_any_size(ods: Path, size: int) -> None:
+    content = parts(ods)["content.xml"]
+
+    def walked(pieces: list[bytes]) -> list[Any]:
+        rows: list[Any] = []
+        walk = Walk(
+            ods,
+            lambda table, row: rows.append(
+                (table, row.number, row.repeated, row.start, row.end, row.cells)
+            ),
+            check=True,
+        )
+        for piece in pieces:
+            walk.feed(piece)
+        walk.feed(b"", True)
+        return rows
+
+    pieces = [content[start : start + size] for start in range(0, len(content), size)]
+    whole = walked([content])
+    assert walked(pieces) == whole
+    assert any(content[start:].startswith(b"<table:table-row") for _, _, _, start, _, _ in whole)
+
+
+@settings(max_examples=60, deadline=None)
+@given(edits=st.dictionaries(cells, values, min_size=1, max_size=12), which=st.integers(0, 1))
+def test_both_ways_write_the_same(
+    two_ways: list[tuple[Path, Path]], edits: dict[tuple[int, int], Value], which: int
+) -> None:
+    written = []
+    for path in two_ways[which]:
+        logbook = Logbook.open(path)
+        sheet = logbook.sheet(logbook.sheet_names[0])
+        for (row, column), value in edits.items():
+            sheet.set(row, column, value)
+        target = path.with_name(f"edited-{path.name}")
+        logbook.save(target, overwrite=True)
+        written.append(parts(target)["content.xml"].replace(CAREFUL, b""))
+    assert written[0] == written[1]
+
+
+def test_both_ways_refuse_the_same(ods: Path, tmp_path: Path) -> None:
+    """Bytes are exchanged at random where the rows stand; neither way may see more than the other.
+
+    What is refused at different places of the file may be refused in other words.
+    """
+    chance = random.Random(11)
+    content = parts(ods)["content.xml"]
+    first, last = content.index(b"<table:table-row"), content.rindex(b"</table:table-row>")
+    refused = 0
+    for _ in range(300):
+        changed = bytearray(content)
+        for _ in range(chance.choice((1, 1, 2))):
+            at = chance.randrange(first, last)
+            match chance.randrange(3):
+                case 0:
+                    changed[at] = chance.choice(b"<>\"'&/ 0\xe9\x00=x")
+                case 1:
+                    del changed[at : at + chance.randrange(1, 30)]
+                case 2:
+                    stop = min(at + chance.randrange(1, 200), last)
+                    changed[at:at] = changed[at:stop]
+        quick = rewritten(ods, tmp_path / "quick.ods", {"content.xml": bytes(changed)})
+        careful = rewritten(
+            ods, tmp_path / "careful.ods", {"content.xml": with_care(bytes(changed))}
+        )
+        one, other = seen(quick), seen(careful)
+        if isinstance(other, str):
+            refused += 1
+            assert isinstance(one, str), other
+        else:
+            assert one == other
+    assert 70 < refused < 290
