@@ -39,8 +39,9 @@ def export(
         typer.Option(
             "--output",
             "-o",
-            help="The file to write; its suffix says the format: .fits, .vot, .ecsv, .csv, "
-            ".parquet. For several logbooks a folder and the suffix: archive/.fits",
+            help="The file to write; its suffix says the format: .fits, .vot, .ecsv, .csv (with "
+            "a .csv-metadata.json beside it that describes it), .parquet. For several logbooks a "
+            "folder and the suffix: archive/.fits",
         ),
     ],
     recipe: Annotated[
@@ -53,7 +54,7 @@ def export(
         str | None, typer.Option(help="The sheet to take, where several hold a table.")
     ] = None,
     dates: Annotated[str, typer.Option(help="iso: ISO 8601 text; jd: Julian dates.")] = "iso",
-    overwrite: Annotated[bool, typer.Option(help="Let the output replace a file.")] = False,
+    overwrite: Annotated[bool, typer.Option(help="Let the output replace files.")] = False,
     as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
 ) -> None:
     """Write a sheet's table with its units to FITS, VOTable, ECSV, CSV or Parquet."""
@@ -121,7 +122,8 @@ def _summary(reports: "BatchReport") -> str:
 
 
 def _print(report: "ExportReport") -> None:
-    print(f"{report.logbook}, sheet {report.sheet} → {report.output}")
+    described = f", described by {report.metadata}" if report.metadata else ""
+    print(f"{report.logbook}, sheet {report.sheet} → {report.output}{described}")
     print(f"{rows_told(report.rows)} of {report.columns} columns")
     for note in report.notes:
         print(f"  note     {note}")

@@ -1,19 +1,34 @@
 """A table leaves the spreadsheet with its values, its units and what is known of it.
 
 Outside checks: astropy.table reads every file back; astropy.time gives the Julian dates; the IVOA's
-UCD1+ word list is the copy that astropy carries; pyarrow reads Parquet without astropy.
-Standards: FITS 4.0 (2018), VOTable 1.4 (IVOA 2019), ECSV 1.0 (astropy APE 6), CSV by RFC 4180.
+UCD1+ word list is the copy that astropy carries; pyarrow reads Parquet without astropy; csvw reads
+and validates CSV with the metadata beside it.
+Standards: FITS 4.0 (2018), VOTable 1.4 (IVOA 2019), ECSV 1.0 (astropy APE 6), CSV by RFC 4180 and
+the W3C Recommendations of 17 December 2015 «Metadata Vocabulary for Tabular Data» (the Vocabulary
+below) and «Model for Tabular Data and Metadata on the Web» (the Model).
 """
 
 import csv
+import errno
+import hashlib
+import json
 import os
+import re
+import signal
 import subprocess
 import sys
+import threading
+import warnings
 from dataclasses import asdict
 from datetime import UTC, datetime, timedelta
+from functools import partial
+from http.server import SimpleHTTPRequestHandler, ThreadingHTTPServer
+from io import StringIO
 from pathlib import Path
 from typing import Any
+from urllib.parse import quote, urljoin
 
+import csvw
 import numpy as np
 import openpyxl
 import pyarrow.parquet
@@ -26,12 +41,16 @@ from astropy.table import Table
 from astropy.time import Time
 from openpyxl.worksheet.worksheet import Worksheet
 
+from workbooks import table_formats
+from workbooks.ascii_spelling import ascii_of
 from workbooks.build import build
-from workbooks.export import ExportReport, ascii_of, export, julian_date
+from workbooks.csv_on_the_web import write_both
+from workbooks.export import ExportReport, export
 from workbooks.fill import fill
 from workbooks.logbook import LogbookError
 from workbooks.recipe import Recipe, built_in, load, read
 from workbooks.saving import write_whole
+from workbooks.typed_columns import julian_date
 
 NOW = datetime(2031, 3, 15, 9, 30, tzinfo=UTC)
 
@@ -184,7 +203,10 @@ UNITS = {
 
 @pytest.mark.parametrize("suffix", [suffix for suffix in FORMATS if suffix != ".csv"])
 def test_every_common_unit_comes_back(tmp_path: Path, suffix: str) -> None:
-    rows = [[f"quantity {n} [{text}]" for n, text in enumerate(UNITS)], [1.5] * len(UNITS)]
+    rows: list[list[Any]] = [
+        [f"quantity {n} [{text}]" for n, text in enumerate(UNITS)],
+        [1.5] * len(UNITS),
+    ]
     path = logbook(tmp_path, rows)
     output = tmp_path / f"out{suffix}"
     report = export(path, output)
@@ -363,7 +385,7 @@ def test_what_cannot_go_into_its_column_is_missing_and_told_by_cell(tmp_path: Pa
 
 
 def test_a_filled_log_goes_out_with_what_made_its_numbers(tmp_path: Path) -> None:
-    rows = [HEADERS[1:6], ["a", "H alpha", 690.0, None, None], [None, None, None, None, None]]
+    rows: list[list[Any]] = [HEADERS[1:6], ["a", "H alpha", 690.0, None, None], [None] * 5]
     path = logbook(tmp_path, [*rows, ["Dome closed", None, None, None, None]])
     filled = tmp_path / "filled.xlsx"
     fill(path, filled, own())
@@ -375,10 +397,10 @@ def test_a_filled_log_goes_out_with_what_made_its_numbers(tmp_path: Path) -> Non
     assert table["redshift"][0] == pytest.approx(690 / 656.461 - 1, abs=2e-6)
 
 
-@pytest.mark.parametrize("name", built_in())
-def test_a_template_filled_and_exported_needs_no_recipe(tmp_path: Path, name: str) -> None:
+def filled_template(folder: Path, name: str) -> Path:
+    """Return a template of this recipe with one row of its first table filled."""
     recipe = load(name)
-    path = tmp_path / f"{name}.xlsx"
+    path = folder / f"{name}.xlsx"
     build(recipe, path, formulas="none", rows=5)
     book = openpyxl.load_workbook(path)
     table = recipe.tables[0]
@@ -394,10 +416,15 @@ def test_a_template_filled_and_exported_needs_no_recipe(tmp_path: Path, name: st
             value = datetime(2031, 3, 14, 20, 7)
         sheet.cell(5, place, value)
     book.save(path)
-    filled = tmp_path / "filled.xlsx"
-    fill(path, filled)
+    fill(path, folder / "filled.xlsx")
+    return folder / "filled.xlsx"
+
+
+@pytest.mark.parametrize("name", built_in())
+def test_a_template_filled_and_exported_needs_no_recipe(tmp_path: Path, name: str) -> None:
+    table = load(name).tables[0]
     output = tmp_path / "out.fits"
-    report = export(filled, output, sheet=table.sheet.name)
+    report = export(filled_template(tmp_path, name), output, sheet=table.sheet.name)
     assert report.recipe == name
     written = Table.read(output)
     assert len(written) == 1
@@ -444,7 +471,10 @@ def test_ucds_go_along(night: Path, tmp_path: Path, suffix: str) -> None:
 
 
 def test_names_that_differ_by_case_or_signs_alone_stay_apart(tmp_path: Path) -> None:
-    rows = [["λ [nm]", "Λ [nm]", "3rd order", "a b", "A-B", "!?"], [1.0, 2.0, 3.0, 4.0, 5.0, 6.0]]
+    rows: list[list[Any]] = [
+        ["λ [nm]", "Λ [nm]", "3rd order", "a b", "A-B", "!?"],
+        [1.0, 2.0, 3.0, 4.0, 5.0, 6.0],
+    ]
     output = tmp_path / "out.fits"
     export(logbook(tmp_path, rows), output)
     table = Table.read(output)
@@ -453,7 +483,7 @@ def test_names_that_differ_by_case_or_signs_alone_stay_apart(tmp_path: Path) -> 
 
 
 def test_the_ampere_and_the_coulomb_are_not_taken_for_what_was_meant(tmp_path: Path) -> None:
-    rows = [["Wavelength [A]", "Temperature (C)"], [5000.0, 4.1], [5001.0, 4.2]]
+    rows: list[list[Any]] = [["Wavelength [A]", "Temperature (C)"], [5000.0, 4.1], [5001.0, 4.2]]
     output = tmp_path / "out.ecsv"
     report = export(logbook(tmp_path, rows), output)
     table = Table.read(output)
@@ -468,6 +498,533 @@ def test_ascii_of() -> None:
     assert ascii_of("Çeşme – ÑØ") == ("Cesme - NO", True)
     assert ascii_of("a\nb") == ("a b", True)
     assert ascii_of("日") == ("?", False)
+
+
+# ---- CSV and the metadata beside it ---------------------------------------------------------
+
+
+def described(table: Path) -> dict[str, Any]:
+    """Return the metadata that stand where the Model, section 5.3, looks for them."""
+    found: dict[str, Any] = json.loads(table.with_name(f"{table.name}-metadata.json").read_bytes())
+    return found
+
+
+def checked_by_csvw(table: Path | str) -> Any:
+    """Return a table as csvw reads it, and what it finds amiss"""
+    with warnings.catch_warnings():
+        # findings are warnings, which must not be switched off
+        warnings.simplefilter("always")
+        read = csvw.CSVW(str(table), validate=True)
+        return read, [] if read.is_valid else [str(each.message) for each in read.warnings]
+
+
+def by_csvw(table: Path | str) -> list[dict[str, Any]]:
+    """Return the rows as csvw reads them by their metadata, None for what is missing."""
+    read, amiss = checked_by_csvw(table)
+    assert amiss == []
+    return [dict(row) for row in read.tables[0].iterdicts(strict=False)]
+
+
+def test_csvw_finds_what_does_not_fit_its_metadata(night: Path) -> None:
+    """The reader that the tests below believe does tell right from wrong."""
+    _, _, output = exported(night, ".csv")
+    sound = output.read_bytes()
+    for right, wrong in ((b"689.28", b"x689.28"), (b"2031-03-14T20:07:00", b"14 March")):
+        output.write_bytes(sound.replace(right, wrong))
+        assert len(checked_by_csvw(output)[1]) == 1, wrong
+    output.write_bytes(sound)
+    beside = output.with_name(f"{output.name}-metadata.json")
+    told = beside.read_text()
+    for before, after in (("tableSchema", "tableScheme"), ('"titles"', '"headers"')):
+        beside.write_text(told.replace(before, after))
+        assert checked_by_csvw(output)[1], after
+    beside.write_text(told.replace("@value", "@worth"))
+    with pytest.raises(ValueError, match="MUST NOT start with @"):
+        checked_by_csvw(output)
+
+
+def test_csv_with_its_metadata_says_what_ecsv_says(night: Path) -> None:
+    recipe = own()
+    columns = recipe.tables[0].sheet.columns
+    object.__setattr__(columns[3], "__dict__", {**columns[3].__dict__, "ucd": "src.redshift"})
+    told, _, _ = exported(night, ".ecsv", recipe=recipe)
+    _, report, output = exported(night, ".csv", recipe=recipe)
+    beside = described(output)
+    rows = by_csvw(output)
+    assert report.notes == [
+        "«Object» holds '=1+1', which a spreadsheet that opens the CSV would take for a formula"
+    ]
+    described_columns = beside["tableSchema"]["columns"]
+    assert [column["name"] for column in described_columns] == told.colnames
+    for column in described_columns:
+        same = told[column["name"]]
+        assert column["dc:description"] == same.description
+        text = column.get("schema:unitText")
+        assert (u.Unit(text, format="vounit") if text else None) == same.unit
+        ucd = column.get("schema:propertyID")
+        assert (ucd.removeprefix("ucd:") if ucd else None) == same.meta.get("ucd")
+        for row, value in zip(rows, same, strict=True):
+            found = row[column["name"]]
+            if value is np.ma.masked:
+                assert found is None
+            elif column["datatype"] == "number":
+                assert np.float64(found).tobytes() == np.float64(value).tobytes()
+            elif column["datatype"] == "dateTime":
+                assert found.isoformat() == value
+            else:
+                assert found == value
+    assert {column["datatype"] for column in described_columns} == {"number", "dateTime", "string"}
+    named = {note["schema:name"]: note["schema:value"] for note in beside["notes"]}
+    named["sheet"], named["logbook"] = beside["dc:title"], beside["dc:source"]
+    named["exported by"] = beside["dc:creator"]
+    named["exported"] = beside["dc:created"]["@value"].removesuffix("Z")
+    assert named == dict(told.meta)
+
+
+def test_the_metadata_keep_to_the_rules_of_the_vocabulary(night: Path) -> None:
+    _, _, output = exported(night, ".csv")
+    beside = described(output)
+    # 5.2: a top-level description has @context; 5.4: what a table may say
+    assert beside["@context"] == "http://www.w3.org/ns/csvw"
+    table = {"@context", "url", "dialect", "notes", "tableSchema"}
+    # 5.6 and 5.7: what a column may say, or inherit
+    column = {"name", "titles", "datatype", "null"}
+    # 5.8.1: everything else by a prefix of RDFa's initial context
+    # (http://www.w3.org/2011/rdfa-context/rdfa-1.1)
+    common = re.compile(r"(dc|schema):[A-Za-z0-9]+")
+    assert all(key in table or common.fullmatch(key) for key in beside)
+    columns = beside["tableSchema"]["columns"]
+    assert all(key in column or common.fullmatch(key) for each in columns for key in each)
+    assert all(common.fullmatch(key) or key == "@type" for each in beside["notes"] for key in each)
+    # 5.6: a name is a variable of RFC 6570, section 2.3, that does not begin with "_"; 5.5: no two
+    # columns have one
+    names = [each["name"] for each in columns]
+    assert all(re.fullmatch(r"[A-Za-z0-9][A-Za-z0-9_]*", name) for name in names)
+    assert len(set(names)) == len(names)
+    # the Model, section 8: titles are those of the header row
+    with output.open(newline="", encoding="utf-8") as file:
+        assert [each["titles"] for each in columns] == next(csv.reader(file))
+    # 5.11.1 lists the datatypes, 5.7 says that "" is what is missing
+    assert beside["tableSchema"]["null"] == ""
+    assert beside["dc:created"] == {"@value": "2031-03-15T09:30:00Z", "@type": "xsd:dateTime"}
+    assert beside["schema:sha256"] == hashlib.sha256(output.read_bytes()).hexdigest()
+
+
+def test_a_name_that_is_no_url_is_found_by_its_metadata_on_the_web(
+    night: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    name = "night 14 #2, 50%: é.csv"
+    export(night, tmp_path / name, own(), now=NOW)
+    monkeypatch.setenv("no_proxy", "127.0.0.1")
+    monkeypatch.setattr(SimpleHTTPRequestHandler, "log_message", lambda *_: None)
+    with ThreadingHTTPServer(
+        ("127.0.0.1", 0), partial(SimpleHTTPRequestHandler, directory=str(tmp_path))
+    ) as server:
+        threading.Thread(target=server.serve_forever, daemon=True).start()
+        address = f"http://127.0.0.1:{server.server_port}/{quote(name)}"
+        # RFC 3986, section 5.2: the name as a reference from where the metadata are
+        assert urljoin(f"{address}-metadata.json", described(tmp_path / name)["url"]) == address
+        rows = by_csvw(address)
+        server.shutdown()
+    assert [row["velocity"] for row in rows][:2] == [14989.6229, 1e-300]
+
+
+@pytest.mark.parametrize("suffix", FORMATS)
+def test_a_row_that_begins_with_a_hash_is_no_comment(tmp_path: Path, suffix: str) -> None:
+    rows: list[list[Any]] = [["#", "z"], ["#7", 0.1], ["# 8, south", 0.2], ["9", 0.3]]
+    path = logbook(tmp_path, rows)
+    table, _, output = exported(path, suffix, recipe=None)
+    assert [float(each) for each in table["z"]] == [0.1, 0.2, 0.3]
+    if suffix == ".csv":
+        assert [row["column"] for row in by_csvw(output)] == ["#7", "# 8, south", "9"]
+        # the Vocabulary, section 5.9: a string, and "#" where there is none
+        prefix = described(output)["dialect"]["commentPrefix"]
+        assert not any(row.startswith(prefix) for row in output.read_text().splitlines())
+
+
+def test_no_dialect_is_told_where_the_usual_one_will_do(night: Path) -> None:
+    _, _, output = exported(night, ".csv")
+    assert "dialect" not in described(output)
+
+
+def test_truths_are_told_as_truths(tmp_path: Path) -> None:
+    rows: list[list[Any]] = [["Object", "Clear", "Guided"], ["a", True, True], ["b", False, None]]
+    _, _, output = exported(logbook(tmp_path, rows), ".csv", recipe=None)
+    assert [row["clear"] for row in by_csvw(output)] == [True, False]
+    assert [row["guided"] for row in by_csvw(output)] == ["TRUE", None]
+
+
+@pytest.mark.parametrize("there", ["out.csv", "out.csv-metadata.json"])
+def test_neither_file_is_replaced_unless_asked(night: Path, tmp_path: Path, there: str) -> None:
+    (tmp_path / there).write_text("another's")
+    with pytest.raises(LogbookError, match=f"{there} exists and would be overwritten"):
+        export(night, tmp_path / "out.csv", own())
+    assert [each.name for each in tmp_path.iterdir()] == [there]
+    assert (tmp_path / there).read_text() == "another's"
+    (tmp_path / "out.csv-metadata.json").write_text("{}")
+    (tmp_path / "out.csv-metadata.json").chmod(0o640)
+    report = export(night, tmp_path / "out.csv", own(), overwrite=True)
+    assert (report.output, report.metadata) == (
+        str(tmp_path / "out.csv"),
+        str(tmp_path / "out.csv-metadata.json"),
+    )
+    assert sorted(each.name for each in tmp_path.iterdir()) == [
+        "out.csv", "out.csv-metadata.json",
+    ]  # fmt: skip
+    assert (tmp_path / "out.csv-metadata.json").stat().st_mode & 0o777 == 0o640
+    assert len(by_csvw(tmp_path / "out.csv")) == 4
+
+
+def test_a_read_only_file_beside_it_leaves_both(night: Path, tmp_path: Path) -> None:
+    (tmp_path / "out.csv").write_text("old")
+    (tmp_path / "out.csv-metadata.json").write_text("old")
+    (tmp_path / "out.csv-metadata.json").chmod(0o444)
+    with pytest.raises(LogbookError, match=r"metadata.json is read-only"):
+        export(night, tmp_path / "out.csv", own(), overwrite=True)
+    assert (tmp_path / "out.csv").read_text() == "old"
+
+
+OLD = (b"x\r\n1\r\n", b'{"of": "the old"}')
+NEW = (b"x\r\n2\r\n", b'{"of": "the new"}')
+
+
+def pair(table: Path) -> tuple[bytes | None, bytes | None]:
+    beside = table.with_name(f"{table.name}-metadata.json")
+    return tuple(each.read_bytes() if each.exists() else None for each in (table, beside))  # type: ignore[return-value]
+
+
+@pytest.mark.parametrize("old", [True, False])
+@pytest.mark.parametrize("step", range(9))
+def test_a_failure_leaves_no_table_beside_the_metadata_of_another(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, step: int, old: bool
+) -> None:
+    table = tmp_path / "out.csv"
+    if old:
+        write_both(table, *OLD)
+    before = pair(table)
+    steps = []
+    real = {name: getattr(os, name) for name in ("open", "fsync", "replace")}
+
+    def failing(name: str, *arguments: Any, **options: Any) -> Any:
+        steps.append(name)
+        if len(steps) == step + 1:
+            raise OSError(errno.ENOSPC, "No space left on device")
+        return real[name](*arguments, **options)
+
+    with monkeypatch.context() as patched:
+        for name in real:
+            patched.setattr(os, name, partial(failing, name))
+        try:
+            write_both(table, *NEW, overwrite=True)
+            failed = False
+        except LogbookError as error:
+            failed = True
+            told = str(error)
+    if not failed:
+        assert pair(table) == NEW
+    elif pair(table) != before:
+        # the last of the renames: all else is on the disk by then
+        assert pair(table) == (NEW[0], None)
+        assert "out.csv was written, but not its metadata" in told
+    assert {each.name for each in tmp_path.iterdir()} <= {"out.csv", "out.csv-metadata.json"}
+    write_both(table, *NEW, overwrite=True)
+    assert pair(table) == NEW
+
+
+def test_breaking_off_just_after_the_table_leaves_no_old_metadata_beside_it(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    table = tmp_path / "out.csv"
+    write_both(table, *OLD)
+    real = os.replace
+
+    def broken_off(source: Path, target: Path) -> None:
+        real(source, target)
+        if Path(target) == table:
+            raise KeyboardInterrupt
+
+    with monkeypatch.context() as patched:
+        patched.setattr(os, "replace", broken_off)
+        with pytest.raises(KeyboardInterrupt):
+            write_both(table, *NEW, overwrite=True)
+    assert pair(table) == (NEW[0], None)
+    assert [each.name for each in tmp_path.iterdir()] == ["out.csv"]
+
+
+KILLED = """
+import os, signal, sys
+from pathlib import Path
+from workbooks.csv_on_the_web import write_both
+count, real = int(sys.argv[2]), {name: getattr(os, name) for name in ("fsync", "replace")}
+def killed(name, *arguments):
+    global count
+    count -= 1
+    if count == 0:
+        os.kill(os.getpid(), signal.SIGKILL)
+    result = real[name](*arguments)
+    count -= 1
+    if count == 0:
+        os.kill(os.getpid(), signal.SIGKILL)
+    return result
+for name in real:
+    setattr(os, name, lambda *arguments, name=name: killed(name, *arguments))
+write_both(Path(sys.argv[1]), b"x\\r\\n2\\r\\n", b'{"of": "the new"}', overwrite=True)
+"""
+
+
+def test_a_kill_leaves_no_table_beside_the_metadata_of_another(tmp_path: Path) -> None:
+    seen = set()
+    for count in range(1, 30):
+        folder = tmp_path / str(count)
+        folder.mkdir()
+        table = folder / "out.csv"
+        write_both(table, *OLD)
+        ended = subprocess.run(
+            [sys.executable, "-c", KILLED, str(table), str(count)],
+            env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])},
+            check=False,
+        ).returncode
+        assert ended in (0, -signal.SIGKILL)
+        seen.add(pair(table))
+        write_both(table, *NEW, overwrite=True)
+        assert sorted(each.name for each in folder.iterdir()) == [
+            "out.csv", "out.csv-metadata.json",
+        ]  # fmt: skip
+        assert pair(table) == NEW
+        if ended == 0:
+            break
+    else:
+        pytest.fail("it never came to its end")
+    assert seen == {OLD, (OLD[0], None), (NEW[0], None), NEW}
+
+
+# ---- every kind of column in every format ---------------------------------------------------
+
+KINDS = """
+title = "Every kind"
+purpose = "One column of each kind."
+
+[[sheets]]
+name = "Night"
+
+[[sheets.columns]]
+key = "target"
+label = "Target"
+role = "input"
+kind = "text"
+required = false
+
+[[sheets.columns]]
+key = "start"
+label = "Start"
+role = "input"
+kind = "time"
+required = false
+
+[[sheets.columns]]
+key = "line"
+label = "Line"
+role = "input"
+kind = "line"
+
+[[sheets.columns]]
+key = "observed"
+label = "Observed"
+unit = "Angstrom"
+role = "input"
+sigma = "observed_sigma"
+
+[[sheets.columns]]
+key = "observed_sigma"
+label = "± Observed"
+unit = "Angstrom"
+role = "input"
+required = false
+
+[[sheets.columns]]
+key = "frame"
+label = "Frame"
+role = "input"
+choices = ["barycentric", "topocentric"]
+required = false
+
+[[sheets.columns]]
+key = "redshift"
+label = "Redshift"
+role = "computed"
+formula = "redshift_from_line(observed, line)"
+sigma = true
+"""
+
+
+def told_by(output: Path) -> dict[str, tuple[Any, list[Any]]]:
+    """Return the unit and the values of each column, None for what is missing.
+
+    A text that is missing is an empty one in VOTable 1.4 and FITS, which know no other.
+    """
+    if output.suffix == ".csv":
+        rows = by_csvw(output)
+        units = {
+            column["name"]: column.get("schema:unitText")
+            for column in described(output)["tableSchema"]["columns"]
+        }
+        return {
+            key: (
+                u.Unit(units[key], format="vounit") if units[key] else None,
+                [
+                    row[key].isoformat() if isinstance(row[key], datetime) else row[key]
+                    for row in rows
+                ],
+            )
+            for key in units
+        }
+    table = Table.read(output)
+    found = {}
+    for key in table.colnames:
+        values = [None if value is np.ma.masked else value for value in table[key]]
+        if table[key].dtype.kind in "SUO":
+            values = [str(value) if value is not None and str(value) else None for value in values]
+        elif table[key].dtype.kind == "b":
+            values = [bool(value) for value in values]
+        else:
+            values = [None if value is None else float(value) for value in values]
+        found[key] = (table[key].unit, values)
+    return found
+
+
+def test_every_kind_of_column_is_right_in_every_format(tmp_path: Path) -> None:
+    recipe = own(KINDS)
+    headers = ["Target", "Start", "Line", "Observed [Angstrom]", "± Observed [Angstrom]", "Frame",
+               "Redshift", "± Redshift", "Clear", "Guided", "Seeing [arcsec]",
+               "Remark"]  # fmt: skip
+    rows: list[list[Any]] = [
+        ["TH 0412-17", datetime(2031, 3, 14, 20, 7), "H alpha", 6892.843333333333, 0.21,
+         "barycentric", None, None, True, True, 1.1, "ok"],
+        ["=1+1", "2031-03-14T20:14:30.250Z", "H beta", 5100.25, None,
+         "topocentric", None, None, False, None, None, 7.0],
+        [None, None, "H gamma", 4500.0, 0.4, None, None, None, True, False, "#DIV/0!", "#N/A"],
+        ["bad line", None, "H omega", 4500.0, 0.4, None, None, None, True, True, 0.9, None],
+    ]  # fmt: skip
+    path = logbook(tmp_path, [headers, *rows], "kinds.xlsx")
+    book = openpyxl.load_workbook(path)
+    for cell in ("K6", "L6"):
+        book["Night"][cell].data_type = "e"
+    book.save(path)
+    fill(path, tmp_path / "filled.xlsx", recipe)
+    stored = openpyxl.load_workbook(tmp_path / "filled.xlsx", data_only=True)["Night"]
+    computed = {
+        key: [cell.value if isinstance(cell.value, float) else None for cell in stored[letter][3:7]]
+        for key, letter in (("redshift", "G"), ("redshift_sigma", "H"))
+    }
+    # NIST's Ritz wavelengths in vacuum, from memory: H alpha 6564.6, H beta 4862.7, H gamma 4341.7
+    for index, rest in enumerate((6564.6, 4862.7, 4341.7)):
+        assert computed["redshift"][index] == pytest.approx(rows[index][3] / rest - 1, abs=2e-5)
+    assert computed["redshift_sigma"][0] == pytest.approx(0.21 / 6564.6, rel=1e-4)
+    assert computed["redshift_sigma"][1] is None
+    assert computed["redshift"][3] is computed["redshift_sigma"][3] is None
+    length, angle = u.Angstrom, u.arcsec
+    expected: dict[str, tuple[Any, list[Any]]] = {
+        "target": (None, ["TH 0412-17", "=1+1", None, "bad line"]),
+        "start": (None, ["2031-03-14T20:07:00", "2031-03-14T20:14:30.250", None, None]),
+        "line": (None, ["H alpha", "H beta", "H gamma", "H omega"]),
+        "observed": (length, [6892.843333333333, 5100.25, 4500.0, 4500.0]),
+        "observed_sigma": (length, [0.21, None, 0.4, 0.4]),
+        "frame": (None, ["barycentric", "topocentric", None, None]),
+        "redshift": (None, computed["redshift"]),
+        "redshift_sigma": (None, computed["redshift_sigma"]),
+        "clear": (None, [True, False, True, True]),
+        "guided": (None, ["TRUE", None, "FALSE", "TRUE"]),
+        "seeing": (angle, [1.1, None, None, 0.9]),
+        "remark": (None, ["ok", "7", None, None]),
+    }
+    for suffix in FORMATS:
+        output = tmp_path / f"out{suffix}"
+        report = export(tmp_path / "filled.xlsx", output, recipe)
+        found = told_by(output)
+        if suffix == ".csv":
+            # csvw gives a moment as Python writes it
+            expected["start"][1][1] = "2031-03-14T20:14:30.250000"
+        for key, (unit, values) in expected.items():
+            assert found[key][1] == values, (suffix, key)
+            assert found[key][0] in (unit, unit or u.dimensionless_unscaled), (suffix, key)
+        if suffix == ".csv":
+            expected["start"][1][1] = "2031-03-14T20:14:30.250"
+        told = {problem.cell: problem.sentence for problem in report.problems}
+        assert "#DIV/0!" in told["Night!K6"], suffix
+        assert "#N/A" in told["Night!L6"], suffix
+        assert {"Night!G7", "Night!H7"} <= set(told), suffix
+
+
+@pytest.mark.parametrize("name", built_in())
+def test_every_column_of_every_recipe_is_the_same_in_every_format(
+    tmp_path: Path, name: str
+) -> None:
+    filled = filled_template(tmp_path, name)
+    table = load(name).tables[0]
+    sheet = openpyxl.load_workbook(filled, data_only=True)[table.sheet.name]
+    labels = {str(cell.value).split(" [")[0]: cell.column for cell in sheet[4] if cell.value}
+    for suffix in FORMATS:
+        output = tmp_path / f"out{suffix}"
+        export(filled, output, sheet=table.sheet.name)
+        found = told_by(output)
+        for key, column in table.columns.items():
+            if column.hidden:
+                continue
+            value = sheet.cell(5, labels[column.label]).value
+            if isinstance(value, datetime):
+                value = value.isoformat()
+            elif not isinstance(value, (float, int)) and column.is_number:
+                value = None
+            assert found[key][1] == [value], (suffix, key)
+            unit = u.Unit(column.unit) if column.is_number and column.unit else None
+            assert found[key][0] in (unit, unit or u.dimensionless_unscaled), (suffix, key)
+
+
+# ---- long tables ----------------------------------------------------------------------------
+
+
+def test_rows_of_ecsv_and_votable_are_those_that_astropy_writes(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    numbers = [0.1, -0.0, 5.0, 1e22, 1e-300, 123456789.125, 1 / 3, 5e-324]
+    texts = ["a b", "c&<d>]]>", "é 日", 'q"u"', "two\nlines", "plain", "x,y", "'"]
+    rows: list[list[Any]] = [["Name", "Number", "Gaps", "Clear"]]
+    for index in range(3 * len(numbers)):
+        number = numbers[index % len(numbers)]
+        rows.append([texts[index % len(texts)], number, number if index % 2 else None, index < 9])
+    path = logbook(tmp_path, rows)
+    monkeypatch.setattr("workbooks.typed_columns.BLOCK", 5)
+    for suffix, form in ((".ecsv", "ascii.ecsv"), (".vot", "votable")):
+        table, _, output = exported(path, suffix, recipe=None)
+        again = tmp_path / f"again{suffix}"
+        # as the export hands it to astropy, but with all of its rows
+        if suffix == ".ecsv":
+            written = StringIO()
+            table.write(written, format=form)
+            assert output.read_text().splitlines() == written.getvalue().splitlines()
+        else:
+            with warnings.catch_warnings():
+                warnings.simplefilter("ignore")
+                vot.writeto(vot.parse(output), str(again))
+            within = re.compile(rb"<TABLEDATA>.*</TABLEDATA>", re.DOTALL)
+            ours, theirs = (within.search(each.read_bytes()) for each in (output, again))
+            assert ours
+            assert theirs
+            assert ours[0] == theirs[0]
+
+
+def test_one_long_text_does_not_make_every_row_as_long(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    rows: list[list[Any]] = [["Object", "Note"], ["a", "n" * 900], ["b", "short"]]
+    path = logbook(tmp_path, rows)
+    monkeypatch.setattr(table_formats, "MOST_CHARACTERS", 1000)
+    for suffix in (".fits", ".parquet"):
+        with pytest.raises(LogbookError, match="«Note» holds a text of 900 characters"):
+            exported(path, suffix, recipe=None)
+    for suffix in (".vot", ".ecsv", ".csv"):
+        table, _, _ = exported(path, suffix, recipe=None)
+        assert len(str(table["Note" if suffix == ".csv" else "note"][0])) == 900
 
 
 # ---- files ----------------------------------------------------------------------------------
@@ -554,6 +1111,35 @@ def test_the_command(night: Path, tmp_path: Path) -> None:
     assert (ran.returncode, ran.stderr.count("\n")) == (2, 1)
 
 
+def test_the_command_names_both_files_and_takes_a_folder(night: Path, tmp_path: Path) -> None:
+    logs, archive = tmp_path / "logs", tmp_path / "archive"
+    logs.mkdir()
+    archive.mkdir()
+    for name in ("one", "two"):
+        (logs / f"{name}.xlsx").write_bytes(night.read_bytes())
+    (archive / "two.csv-metadata.json").write_text("another's")
+    ran = run(tmp_path, "export", "logs", "-o", "archive/.csv", "--json")
+    assert ran.returncode == 1
+    told = json.loads(ran.stdout)
+    assert [each["output"] for each in told["logbooks"]] == ["archive/one.csv"]
+    assert [each["metadata"] for each in told["logbooks"]] == ["archive/one.csv-metadata.json"]
+    assert [each["sentence"] for each in told["failed"]] == [
+        "archive/two.csv-metadata.json exists and would be overwritten"
+    ]
+    assert sorted(each.name for each in archive.iterdir()) == [
+        "one.csv", "one.csv-metadata.json", "two.csv-metadata.json",
+    ]  # fmt: skip
+    ran = run(tmp_path, "export", "logs", "-o", "archive/.csv", "--overwrite")
+    assert ran.returncode == 0
+    for name in ("one", "two"):
+        assert f"→ archive/{name}.csv, described by archive/{name}.csv-metadata.json" in ran.stdout
+        assert len(by_csvw(archive / f"{name}.csv")) == 4
+        assert described(archive / f"{name}.csv")["dc:source"] == f"{name}.xlsx"
+    # a folder with both is a folder of two logbooks, not of four
+    ran = run(tmp_path, "check", "archive", "--json")
+    assert len(json.loads(ran.stdout)["logbooks"]) == 2
+
+
 def test_without_the_library_parquet_is_declined_in_a_sentence(night: Path, tmp_path: Path) -> None:
     (tmp_path / "hidden").mkdir()
     (tmp_path / "hidden" / "pyarrow.py").write_text("raise ImportError('not here')")
@@ -568,3 +1154,4 @@ def test_without_the_library_parquet_is_declined_in_a_sentence(night: Path, tmp_
 def test_the_report_is_plain_data(night: Path, tmp_path: Path) -> None:
     report = export(night, tmp_path / "out.csv", own())
     assert asdict(report)["columns"] == 8
+    assert asdict(export(night, tmp_path / "out.vot", own()))["metadata"] == ""
