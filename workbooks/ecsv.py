@@ -8,8 +8,9 @@ from pathlib import Path
 from typing import Any, BinaryIO, Final
 
 from workbooks.cells import ErrorValue, LogbookError, Value, cell_name
-from workbooks.delimited import DelimitedLogbook, DelimitedSheet, Record, Text, unquoted
+from workbooks.delimited import DelimitedLogbook, DelimitedSheet
 from workbooks.logbook import parse_header
+from workbooks.records import Record, Text, unquoted
 
 LONGEST_HEADER: Final = 1 << 20
 NUMBERS: Final = re.compile(r"(?:u?int|float)\d+\Z")
@@ -29,11 +30,12 @@ class Described:
 class EcsvLogbook(DelimitedLogbook):
     """A file of delimited text under a header in YAML."""
 
-    def _made(self, content: bytes, separator: str | None) -> DelimitedSheet:
+    def _made(self, separator: str | None) -> DelimitedSheet:
+        content = self._file.head(LONGEST_HEADER)
         if not content.startswith(b"# %ECSV "):
             raise LogbookError(f"{self.path} is not an .ecsv, whatever its name says")
         end = 0
-        for line in content[:LONGEST_HEADER].splitlines(keepends=True):
+        for line in content.splitlines(keepends=True):
             if not line.startswith(b"#"):
                 break
             end += len(line)
@@ -44,7 +46,7 @@ class EcsvLogbook(DelimitedLogbook):
         except UnicodeDecodeError:
             raise LogbookError(f"{self.path} is not a text in utf-8") from None
         described, delimiter = _read(header, self.path)
-        text = Text(self.path, content[end:], delimiter)
+        text = Text(self._file, delimiter, end)
         text.decimal = "."
         return EcsvSheet(text, header, described)
 

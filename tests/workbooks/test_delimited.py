@@ -1,12 +1,14 @@
 """Logbooks in .csv, .tsv and .ecsv: what is not computed keeps its bytes.
 
 Outside checks: Python's csv module, astropy and LibreOffice read what was written; files are
-compared by byte.
+compared by byte; the kernel says how much memory a filling took.
 """
 
 import csv
 import io
+import os
 import sys
+import time
 from pathlib import Path
 
 import numpy as np
@@ -15,15 +17,26 @@ import pytest
 from astropy.table import Table
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from turns import of_process
 
 sys.path.insert(0, str(Path(__file__).parent))
 
-from logs import HEADERS, ROWS, by_libreoffice, recipe, redshift, run, write_xlsx
+from logs import (
+    HEADERS,
+    RECIPE,
+    ROWS,
+    by_libreoffice,
+    recipe,
+    redshift,
+    run,
+    write_xlsx,
+)
 
 import cellfuncs as cf
-from workbooks.delimited import Text
+from workbooks import delimited, records
 from workbooks.fill import Report, fill
 from workbooks.logbook import ErrorValue, Logbook, LogbookError
+from workbooks.records import LONGEST, OpenedFile, Text, unquoted
 
 NEW = ["Redshift", "Velocity [km/s]", "Computed with"]
 
@@ -166,24 +179,221 @@ def test_what_is_no_text(tmp_path: Path, content: bytes, words: str) -> None:
 
 fields = st.text(
     st.characters(codec="utf-8", exclude_characters="\0\r", exclude_categories=["Cs"]), max_size=6
-) | st.sampled_from(['"', ",", "\n", "1.5", " ", '""', "a\r\nb"])
+) | st.sampled_from(['"', ",", "\n", "1.5", " ", '""', "a\r\nb", '"\n', '5" tube\n"', "\n\n"])
 
 
 @settings(max_examples=200, deadline=None)
 @given(
     rows=st.lists(st.lists(fields, min_size=2, max_size=4), min_size=1, max_size=5),
     end=st.sampled_from(["\n", "\r\n"]),
+    last=st.booleans(),
+    encoding=st.sampled_from(["utf-8", "utf-8-sig", "utf-16"]),
+    size=st.integers(1, 40),
 )
-def test_fields_agree_with_the_csv_module(rows: list[list[str]], end: str) -> None:
+def test_blocks_may_end_anywhere(
+    tmp_path_factory: pytest.TempPathFactory,
+    rows: list[list[str]],
+    end: str,
+    last: bool,
+    encoding: str,
+    size: int,
+) -> None:
+    """In the middle of a character, a line's end, a quotation: csv reads the same in the end."""
     out = io.StringIO(newline="")
     csv.writer(out, lineterminator=end).writerows([["first", "row"], *rows])
-    read = list(csv.reader(io.StringIO(out.getvalue(), newline="")))
-    text = Text(Path("night.csv"), out.getvalue().encode(), ",")
-    from workbooks.delimited import unquoted
+    whole = out.getvalue() if last else out.getvalue().removesuffix(end)
+    read = list(csv.reader(io.StringIO(whole, newline="")))
+    path = written(tmp_path_factory.getbasetemp(), whole.encode(encoding))
+    outputs = []
+    for block in (size, 1 << 20):
+        with pytest.MonkeyPatch.context() as patch:
+            patch.setattr(records, "BLOCK", block)
+            text = Text(OpenedFile(path), ",")
+            found = list(text.records())
+            assert [list(map(unquoted, record.fields)) for record in found] == read
+            assert "".join(record.text + record.end for record in found) == whole
+            logbook = Logbook.open(path)
+            output = path.with_name("out.csv")
+            logbook.save(output, overwrite=True)
+            assert output.read_bytes() == path.read_bytes()
+            sheet = delimited.DelimitedSheet(text)
+            sheet.set_column(6, 1, [1.5] * len(read))
+            outputs.append(io.BytesIO())
+            sheet.write(outputs[-1])
+    assert outputs[0].getvalue() == outputs[1].getvalue()
+    after = outputs[0].getvalue().decode(encoding)
+    assert list(csv.reader(io.StringIO(after, newline=""))) == [
+        [*row, *[""] * (5 - len(row)), "1.5"] for row in read
+    ]
 
-    records = list(text.records())
-    assert [list(map(unquoted, record.fields)) for record in records] == read
-    assert "".join(record.text + record.end for record in records) == out.getvalue()
+
+@pytest.mark.parametrize(
+    "content",
+    [
+        b"Line,Wavelength [nm]\r\nH alpha,689.284\nH beta,510.4\r\n",
+        b"Line,Wavelength [nm]\nH alpha,689.284\nH beta,510.4\r\n",
+        b"Line,Wavelength [nm]\r\nH alpha,689.284\r\nH beta,510.4",
+        b"Line,Wavelength [nm]\r\nH alpha,689.284\r\nH beta,510.4\r",
+        b"Line,Wavelength [nm]\rH alpha,689.284\rH beta,510.4",
+        b"Line,Wavelength [nm]\rH alpha,689.284\rH beta,510.4\r",
+    ],
+)
+def test_every_line_keeps_its_own_end(tmp_path: Path, content: bytes) -> None:
+    _, after = filled(written(tmp_path, content))
+    old, new = content.splitlines(keepends=True), after.splitlines(keepends=True)
+    for before, line in zip(old, new, strict=True):
+        bare = before.rstrip(b"\r\n")
+        assert line.startswith(bare + b",")
+        assert line.removeprefix(line.rstrip(b"\r\n")) == before.removeprefix(bare)
+
+
+def test_encodings_are_told_from_the_whole_file(tmp_path: Path) -> None:
+    """One letter far down says that a log is not in UTF-8, another that it is not cp1252 either."""
+    rows = b"".join(b"TH %d,H alpha,689.284,x\n" % at for at in range(20_000))
+    for letter, encoding in ((b"\xc5", "cp1252"), (b"\x81", "latin-1"), (b"\xc3\x85", "utf-8")):
+        content = HEADER.encode() + b"\n" + rows + b"TH,H alpha,689.284," + letter + b"\n"
+        path = written(tmp_path, content)
+        assert Text(OpenedFile(path), None).encoding == encoding
+        _, after = filled(path)
+        for old, new in zip(content.split(b"\n"), after.split(b"\n"), strict=True):
+            assert new.startswith(old)
+
+
+def test_a_quotation_that_takes_in_the_rest(tmp_path: Path) -> None:
+    """However many lines follow, that is seen at once."""
+    path = written(tmp_path, b'a,b\n"never closed,1\n' + b"1,2\n" * 200_000)
+    begun = time.monotonic()
+    with pytest.raises(LogbookError, match='not closed: "never closed,1') as caught:
+        _ = Logbook.open(path).sheet("night").rows
+    assert time.monotonic() - begun < 10
+    assert "night.csv" in str(caught.value)
+
+
+@pytest.mark.parametrize("quote", [b"", b'"'])
+def test_a_line_without_end(tmp_path: Path, quote: bytes) -> None:
+    path = written(tmp_path, b"a,b\n1,2\n" + quote + b"x" * (LONGEST + 100_000))
+    with pytest.raises(LogbookError, match="not closed: .x" if quote else "more than 1,048,576"):
+        _ = Logbook.open(path).sheet("night").rows
+
+
+def test_one_row_is_far_wider_than_the_others(tmp_path: Path) -> None:
+    """Sixteen thousand fields once do not make as many of each empty line."""
+    path = written(tmp_path, b"Line\n" + b"," * 16_000 + b"x\n" + b"\n" * 60_000 + b"end\n")
+    sheet = Logbook.open(path).sheet("night")
+    cells = sheet.columns({1})[1]
+    assert (cells[0], cells[-1], len(cells), sheet.width) == ("Line", "end", 60_003, 16_001)
+    assert (sheet.last_used_column(2), sheet.last_used_column(3)) == (16_001, 1)
+    wide = written(tmp_path, b"Line\n" + b"," * 20_000 + b"\n")
+    with pytest.raises(LogbookError, match=r"2 rows of up to 20,001 fields, more than"):
+        _ = Logbook.open(wide).sheet("night").top
+
+
+# ---- a file that changes
+
+
+LONG = HEADER.encode() + b"\n" + b"TH,H alpha,689.284,x\n" * 20_000
+
+
+def later(path: Path, content: bytes) -> None:
+    """Write into the file that is there, as a program that does not swap it in whole."""
+    with path.open("r+b") as file:
+        file.write(content)
+        file.truncate()
+
+
+def test_a_file_that_changes_while_it_is_read_first(tmp_path: Path) -> None:
+    path = written(tmp_path, LONG)
+    for content in (LONG[:-21], LONG + b"TH,H alpha,700,x\n", LONG.replace(b"689", b"700")):
+        file = OpenedFile(path)
+        chunks = file.chunks()
+        next(chunks)
+        later(path, content)
+        with pytest.raises(LogbookError, match=r"night\.csv was being written by another program"):
+            list(chunks)
+
+
+@pytest.mark.parametrize("same_time", [False, True])
+@pytest.mark.parametrize("in_place", [False, True])
+def test_a_file_that_changes_before_it_is_written(
+    tmp_path: Path, same_time: bool, in_place: bool
+) -> None:
+    """Not even where its size and the time of its change say nothing of it."""
+    path = written(tmp_path, LONG)
+    logbook = Logbook.open(path)
+    sheet = logbook.sheet("night")
+    sheet.set_column(5, 1, ["new"] * len(sheet.columns({3})[3]))
+    before = path.stat()
+    theirs = LONG.replace(b"689.284", b"700.111")
+    later(path, theirs)
+    if same_time:
+        os.utime(path, ns=(before.st_atime_ns, before.st_mtime_ns))
+    output = path if in_place else tmp_path / "out.csv"
+    with pytest.raises(LogbookError, match=r"night\.csv was changed by someone else since it was"):
+        logbook.save(output, overwrite=True, backup=True)
+    assert [each.name for each in tmp_path.iterdir()] == ["night.csv"]
+    assert path.read_bytes() == theirs
+    with pytest.raises(LogbookError, match=r"night\.csv was changed by someone else"):
+        sheet.columns({4})
+
+
+def test_another_file_put_in_its_place(tmp_path: Path) -> None:
+    """What was opened is what is written, and not over what came in between."""
+    path = written(tmp_path, LONG)
+    logbook = Logbook.open(path)
+    logbook.sheet("night").set(1, 4, "Note")
+    (tmp_path / "theirs").write_bytes(HEADER.encode())
+    (tmp_path / "theirs").replace(path)
+    logbook.save(tmp_path / "out.csv")
+    assert (tmp_path / "out.csv").read_bytes() == LONG.replace(b"Remark", b"Note", 1)
+    with pytest.raises(LogbookError, match="changed by someone else"):
+        logbook.save(path, overwrite=True)
+    assert path.read_bytes() == HEADER.encode()
+
+
+@pytest.mark.parametrize("closed_first", [False, True])
+def test_saved_in_place(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, closed_first: bool
+) -> None:
+    """Where no open file can be replaced it is closed, and then there is nothing more to read."""
+    monkeypatch.setattr(delimited, "CLOSED_FIRST", closed_first)
+    path = written(tmp_path, LONG)
+    logbook = Logbook.open(path)
+    logbook.sheet("night").set(1, 4, "Note")
+    logbook.save(path, overwrite=True)
+    assert path.read_bytes() == LONG.replace(b"Remark", b"Note", 1)
+    if closed_first:
+        with pytest.raises(LogbookError, match="open it again"):
+            logbook.sheet("night").columns({1})
+    else:
+        logbook.sheet("night").set(1, 3, "Other")
+        logbook.save(path, overwrite=True)
+        assert path.read_bytes().startswith(b"Target,Line,Other,Note\n")
+
+
+# ---- memory
+
+
+@pytest.mark.parametrize("quote", ["", '"'])
+def test_columns_that_are_not_used_take_no_memory(tmp_path: Path, quote: str) -> None:
+    (tmp_path / "own.toml").write_text(RECIPE)
+    log = tmp_path / "night.csv"
+    found = []
+    for width in (12, 40):
+        names = ["Line", "Wavelength [nm]", *(f"Remark {at}" for at in range(width - 2))]
+        remark = "thin clouds in the north-west from midnight on; the dome waited"
+        row = ["H alpha", "689.284", *[remark] * (width - 3), f"{quote}closed at dawn{quote}"]
+        with log.open("w") as file:
+            file.write(",".join(names) + "\n")
+            file.writelines([",".join(row) + "\n"] * 20_000)
+        command = ("fill", log, "-o", tmp_path / "out.csv", "-r", tmp_path / "own.toml")
+        found.append(of_process("-m", "workbooks.cli", *command, "--overwrite")[1])
+        with (tmp_path / "out.csv").open() as file:
+            filled = csv.reader(file)
+            assert next(filled)[width:] == NEW
+            for row in filled:
+                assert float(row[width]) == pytest.approx(0.05, abs=1e-3)
+    assert log.stat().st_size > 45e6
+    assert found[1] / found[0] < 1.1
 
 
 def test_a_file_of_libreoffice(tmp_path: Path) -> None:
@@ -193,7 +403,7 @@ def test_a_file_of_libreoffice(tmp_path: Path) -> None:
     assert (report.sheets[0].filled, report.sheets[0].refused) == (4, 2)
     for old, new in zip(before.split(b"\n"), after.split(b"\n"), strict=True):
         assert new.startswith(old)
-    encoding = Text(path, before, None).encoding
+    encoding = Text(OpenedFile(path), None).encoding
     back = by_libreoffice(path.with_name("filled.csv"), "xlsx", tmp_path / "back")
     sheet = openpyxl.load_workbook(back)["filled"]
     assert [cell.value for cell in sheet[1]] == [*HEADERS, *NEW]
@@ -293,8 +503,6 @@ def test_a_header_that_does_not_hold(ecsv: Path, old: str, new: str) -> None:
 
 
 def test_the_command_takes_them(ecsv: Path) -> None:
-    from logs import RECIPE
-
     (ecsv.parent / "own.toml").write_text(RECIPE)
     ran = run(ecsv.parent, "fill", "night.ecsv", "-r", "own.toml")
     assert (ran.returncode, ran.stderr) == (1, "")
