@@ -1,8 +1,9 @@
 """Values noted for cells, column by column, until they are written."""
 
+from array import array
 from collections.abc import Iterator, Mapping, Sequence
 from enum import Enum
-from itertools import repeat
+from itertools import chain, repeat
 from math import isfinite
 from typing import Final
 
@@ -25,12 +26,69 @@ UNSET: Final = Unset.UNSET
 """Where no value was noted; None is one, which empties the cell"""
 
 
+class _Column:
+    """The values noted for a column, by row; what is a long run of finite floats is packed."""
+
+    __slots__ = ("_cells", "_numbers")
+
+    def __init__(self) -> None:
+        self._cells: list[Value | Unset] = []
+        self._numbers = array("d")
+        """The rows after those, a quarter as large as in a list"""
+
+    def __len__(self) -> int:
+        return len(self._cells) + len(self._numbers)
+
+    def __getitem__(self, row: int) -> Value | Unset:
+        before = len(self._cells)
+        return self._cells[row] if row < before else self._numbers[row - before]
+
+    def __iter__(self) -> Iterator[Value | Unset]:
+        return chain(self._cells, self._numbers)
+
+    def between(self, start: int, stop: int) -> list[Value | Unset]:
+        """Return the values from one row to another, UNSET after the last."""
+        before = len(self._cells)
+        found = self._cells[start:stop]
+        if stop > before:
+            found += self._numbers[max(start - before, 0) : stop - before]
+        return found + [UNSET] * (stop - start - len(found))
+
+    def set(self, row: int, value: Value | Unset) -> None:
+        self._unpack()
+        self.lengthen(row)
+        if row == len(self._cells):
+            self._cells.append(value)
+        else:
+            self._cells[row] = value
+
+    def lengthen(self, length: int) -> None:
+        """Note nothing for the rows from the last one up to a length."""
+        missing = length - len(self)
+        if missing > 0:
+            self._unpack()
+            self._cells.extend(repeat(UNSET, missing))
+
+    def extend(self, values: "Sequence[Value | Unset]", *, packed: bool) -> None:
+        """Note values for the rows after the last one; those to be packed are floats."""
+        if packed:
+            self._numbers.extend(values)  # type: ignore[arg-type]
+        else:
+            self._unpack()
+            self._cells += values
+
+    def _unpack(self) -> None:
+        if self._numbers:
+            self._cells += self._numbers
+            self._numbers = array("d")
+
+
 class Edits:
-    """The values noted for a sheet; a column is a list whose index is the row."""
+    """The values noted for a sheet, column by column."""
 
     def __init__(self, sheet: str = "") -> None:
         self._sheet = sheet
-        self._columns: dict[int, list[Value | Unset]] = {}
+        self._columns: dict[int, _Column] = {}
 
     @classmethod
     def of(cls, edits: Mapping[int, Mapping[int, Value]]) -> "Edits":
@@ -46,20 +104,14 @@ class Edits:
         # The common case, a finite float, needs no further look.
         if type(value) is not float or value - value != 0.0:
             check_value(value, f"cell {cell_name(row, column)} of sheet {self._sheet!r}")
-        cells = self._cells(row, column)
-        if row == len(cells):
-            cells.append(value)
-        else:
-            if row > len(cells):
-                cells.extend(repeat(UNSET, row + 1 - len(cells)))
-            cells[row] = value
+        self._cells(row, column).set(row, value)
 
     def set_column(self, column: int, rows: range, values: Sequence[Value | Unset]) -> None:
         """Note values for the cells of a column; where one is UNSET, none is noted."""
         cells = self._cells(rows.start, column)
         if len(cells) <= rows.start and rows.stop <= LAST_ROW and self._are_sound(column, values):
-            cells.extend(repeat(UNSET, rows.start - len(cells)))
-            cells.extend(values)
+            cells.lengthen(rows.start)
+            cells.extend(values, packed=type(values[0]) is float)
             return
         for row, value in zip(rows, values, strict=True):
             if value is not UNSET:
@@ -76,7 +128,7 @@ class Edits:
             return True
         return False
 
-    def _cells(self, row: int, column: int) -> list[Value | Unset]:
+    def _cells(self, row: int, column: int) -> _Column:
         if not (1 <= row <= LAST_ROW and 1 <= column <= LAST_COLUMN):
             raise LogbookError(
                 f"row {row}, column {column} is outside a sheet: rows go from 1 to {LAST_ROW}, "
@@ -84,7 +136,7 @@ class Edits:
             )
         cells = self._columns.get(column)
         if cells is None:
-            cells = self._columns[column] = []
+            cells = self._columns[column] = _Column()
             # Kept in order, so that a row's cells come from left to right.
             self._columns = dict(sorted(self._columns.items()))
         return cells
@@ -94,8 +146,8 @@ class Edits:
 
     def __contains__(self, place: tuple[int, int]) -> bool:
         row, column = place
-        cells = self._columns.get(column, ())
-        return row < len(cells) and cells[row] is not UNSET
+        cells = self._columns.get(column)
+        return cells is not None and row < len(cells) and cells[row] is not UNSET
 
     @property
     def columns(self) -> list[int]:
@@ -115,9 +167,9 @@ class Edits:
             if number < len(cells) and cells[number] is not UNSET
         ]
 
-    def values_of(self, number: int) -> list[Value | Unset]:
-        """Return a row's values for all of `columns`, UNSET where none was noted."""
-        return [cells[number] if number < len(cells) else UNSET for cells in self._columns.values()]
+    def rows(self, start: int, stop: int) -> Iterator[tuple[Value | Unset, ...]]:
+        """Yield the values of `columns` row by row, UNSET where none was noted."""
+        return zip(*(cells.between(start, stop) for cells in self._columns.values()), strict=True)
 
     def column(self, number: int) -> Iterator[tuple[int, Value]]:
         """Yield the rows and values noted for a column, from above."""
@@ -127,8 +179,8 @@ class Edits:
 
     def values(self, column: int, start: int, stop: int) -> list[Value] | None:
         """Return the values noted for some rows of a column, None where one has none."""
-        cells = self._columns[column][start:stop]
-        if len(cells) < stop - start or UNSET in cells:
+        cells = self._columns[column].between(start, stop)
+        if UNSET in cells:
             return None
         return cells  # type: ignore[return-value]
 

@@ -551,13 +551,13 @@ class SheetPart:
         has_spans = b"spans" in content
         number_of = self._plain_rows.row_number.match
         out: list[bytes] = []
-        for row in rows:
+        noted = edits.rows(before + 1, before + 1 + len(rows))
+        for row, values in zip(rows, noted, strict=True):
             found = number_of(row)
-            number = int(found[1]) if found else 0
-            if number != before + 1:
+            if not found or int(found[1]) != before + 1:
                 return None
-            before = number
-            cells = self._new_cells(found[1], columns, edits.values_of(number)) if found else b""
+            before += 1
+            cells = self._new_cells(found[1], columns, values)
             if cells and has_spans:
                 tag_end = row.index(b">") + 1
                 out += widened_spans(row[:tag_end], columns), row[tag_end:], cells, end
@@ -670,7 +670,7 @@ class SheetPart:
         )
 
     def _new_cells(
-        self, number: bytes, columns: Sequence[int], values: "list[Value | Unset]"
+        self, number: bytes, columns: Sequence[int], values: "tuple[Value | Unset, ...]"
     ) -> bytes:
         """Return new cells of a plain row, written with a pattern for values of their types."""
         types = tuple(map(type, values))
@@ -679,18 +679,19 @@ class SheetPart:
         if known is None:
             known = self._row_patterns[types] = self._row_pattern(columns, values)
         pattern, others = known
-        texts: list[object] = values  # type: ignore[assignment]
+        texts: tuple[object, ...] = values
         if others:
-            texts = list(values)
+            changed = list(texts)
             # From the end, so that the places before stay as they were counted.
             for place in others:
                 value = values[place]
                 if is_something(value):
-                    texts[place] = stored_as(value, False, prefix)[1]
+                    changed[place] = stored_as(value, False, prefix)[1]
                 else:
-                    del texts[place]
+                    del changed[place]
+            texts = tuple(changed)
         # as short as elsewhere: 5, not 5.0
-        cells = (pattern % tuple(texts)).replace(b".0</%bv>" % prefix, b"</%bv>" % prefix)
+        cells = (pattern % texts).replace(b".0</%bv>" % prefix, b"</%bv>" % prefix)
         return cells.replace(b"\0", number)
 
     def _row_pattern(
