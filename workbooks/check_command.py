@@ -38,7 +38,9 @@ def check(
     ] = None,
     annotate: Annotated[
         Path | None,
-        typer.Option(help="Write the findings as cell comments into this copy, .xlsx or .xlsm."),
+        typer.Option(
+            help="Write the findings as cell comments into this copy: .xlsx, .xlsm, .ods."
+        ),
     ] = None,
     overwrite: Annotated[bool, typer.Option(help="Let the copy replace a file.")] = False,
     as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
@@ -46,7 +48,6 @@ def check(
     """Look logbooks through for mistakes of hands and programs; nothing is changed."""
     from workbooks import batch
     from workbooks import check as checking
-    from workbooks.annotate import annotate as annotated
     from workbooks.recipe import load
 
     logbooks, passed_over = batch.found(logbook)
@@ -57,6 +58,8 @@ def check(
             tell(logbooks[0])
         commented = None
         if annotate is not None:
+            from workbooks.annotate import annotate as annotated
+
             commented = annotated(logbooks[0], annotate, report.findings, overwrite=overwrite)
         tell_one(report, as_json, _print)
         if commented is not None and not as_json:
@@ -89,7 +92,7 @@ def _summary(reports: "BatchReport") -> str:
 
 
 def _print(report: "CheckReport") -> None:
-    from workbooks.check import KINDS
+    from workbooks.findings import KINDS
 
     by = f" by the recipe {report.recipe}" if report.recipe else ""
     count = len(report.findings)

@@ -10,9 +10,9 @@ from typing import Final
 from lxml import etree
 
 from workbooks.archive import Archive
-from workbooks.formulas import moved_down, relative
-from workbooks.logbook import Area
+from workbooks.cells import Area, column_number
 from workbooks.package import Package
+from workbooks.xml_check import ATTRIBUTES, attributes_of
 
 _PLACE: Final = re.compile(r"([A-Z]{1,3})([0-9]{1,7})")
 
@@ -36,20 +36,20 @@ class FormulaCells:
     groups: list[Written] = field(default_factory=list)
     by_column: dict[int, dict[int, int]] = field(default_factory=dict)
     _by_shape: dict[tuple[int, str], int] = field(default_factory=dict)
-    _last: dict[int, tuple[int, str, int]] = field(default_factory=dict)
+    _moving: list["_Moving"] = field(default_factory=list)
+    _last: dict[int, int] = field(default_factory=dict)
 
     def add(self, row: int, column: int, text: str) -> int:
         """Note a cell's formula and return its group."""
-        before = self._last.get(column)
+        group = self._last.get(column, -1)
         # the cell below most often holds the same formula, moved down: telling that is quick
-        if before and row != before[0] and moved_down(before[1], before[0], row) == text:
-            group = before[2]
-        else:
+        if group < 0 or self._moving[group].in_row(row) != text:
             shape = (column, relative(text, row, column))
             group = self._by_shape.setdefault(shape, len(self.groups))
             if group == len(self.groups):
                 self.groups.append(Written(text, row, column))
-        self._last[column] = (row, text, group)
+                self._moving.append(_Moving(text, row))
+        self._last[column] = group
         self.put(row, column, group)
         return group
 
@@ -71,17 +71,11 @@ def formula_cells(path: Path, sheet: str) -> FormulaCells:
 def _of_worksheet(content: bytes) -> FormulaCells:
     found = FormulaCells()
     shared: dict[str, int] = {}
-    for cell, formula in _formulas(content):
+    for cell, kind, number, text in _formulas(content):
         place = _PLACE.fullmatch(cell)
-        if place is None:
+        if place is None or kind == "dataTable":
             continue
-        area = Area.parsed(cell)
-        assert area is not None
-        row, column = area[:2]
-        kind, text = formula.get("t"), formula.text or ""
-        number = str(formula.get("si", ""))
-        if kind == "dataTable":
-            continue
+        row, column = int(place[2]), column_number(place[1])
         if text:
             group = found.add(row, column, f"={text}")
             if kind == "shared":
@@ -91,7 +85,38 @@ def _of_worksheet(content: bytes) -> FormulaCells:
     return found
 
 
-def _formulas(content: bytes) -> Iterator[tuple[str, etree._Element]]:
+_CELL_AND_FORMULA: Final = re.compile(
+    rb"<((?:[\w.-]+:)?)c(?=\s)(" + ATTRIBUTES + rb")>\s*"
+    rb"<\1f(?=[\s/>])(" + ATTRIBUTES + rb")(?:/>|>([^<]*)</)"
+)
+
+
+def _formulas(content: bytes) -> Iterator[tuple[str, str, str, str]]:
+    """Yield cell, kind, number among the shared ones and text of each formula."""
+    if b"<!" in content or content.find(b"<?", 1) > 0:
+        # what looks like a cell may be a remark
+        yield from _parsed_formulas(content)
+        return
+    # half the time of a parser, which builds a tree of every cell
+    for found in _CELL_AND_FORMULA.finditer(content):
+        tag, of_formula, text = found.group(2, 3, 4)
+        given = attributes_of(of_formula) if of_formula else {}
+        yield (
+            attributes_of(tag).get(b"r", b"").decode(),
+            given.get(b"t", b"").decode(),
+            given.get(b"si", b"").decode(),
+            _unescaped(text or b""),
+        )
+
+
+def _unescaped(text: bytes) -> str:
+    if b"&" not in text:
+        return text.decode()
+    parser = etree.XMLParser(resolve_entities=False, no_network=True, load_dtd=False)
+    return etree.fromstring(b"<f>%b</f>" % text, parser).text or ""
+
+
+def _parsed_formulas(content: bytes) -> Iterator[tuple[str, str, str, str]]:
     # the part was found to be free of entities when the logbook was opened
     events = etree.iterparse(
         BytesIO(content),
@@ -104,7 +129,12 @@ def _formulas(content: bytes) -> Iterator[tuple[str, etree._Element]]:
         if element.tag.endswith("}f"):
             cell = element.getparent()
             if cell is not None and cell.get("r"):
-                yield str(cell.get("r")), element
+                yield (
+                    str(cell.get("r")),
+                    str(element.get("t", "")),
+                    str(element.get("si", "")),
+                    element.text or "",
+                )
         else:
             element.clear()
             while (before := element.getprevious()) is not None:
@@ -114,9 +144,57 @@ def _formulas(content: bytes) -> Iterator[tuple[str, etree._Element]]:
                 parent.remove(before)
 
 
+# ---- one formula for many rows -----------------------------------------------------------------
+
+_MOVING: Final = re.compile(
+    r"""("(?:[^"]|"")*"|'(?:[^']|'')*')"""
+    r"|(?<![A-Za-z0-9_.$])(\$?)([A-Z]{1,3})(\$?)([0-9]{1,7})(?![A-Za-z0-9_.(])"
+)
+
+
+def relative(formula: str, row: int, column: int) -> str:
+    """Return the formula with its cells counted from its own, so that copies of it are alike."""
+
+    def counted(found: re.Match[str]) -> str:
+        if found[1] is not None:
+            return found[1]
+        place = Area.parsed(f"{found[3]}1")
+        across = found[3] if found[2] or place is None else f"({place.first_column - column})"
+        down = found[5] if found[4] else f"({int(found[5]) - row})"
+        return f"\0{found[2]}{across}{found[4]}{down}"
+
+    return _MOVING.sub(counted, formula)
+
+
+class _Moving:
+    """A formula that moves up and down its column."""
+
+    def __init__(self, formula: str, row: int) -> None:
+        self._between: list[str] = []
+        self._down: list[int] = []
+        end = 0
+        for found in _MOVING.finditer(formula):
+            if found[1] is None and not found[4]:
+                self._between.append(formula[end : found.start(5)])
+                self._down.append(int(found[5]) - row)
+                end = found.end()
+        self._between.append(formula[end:])
+        self._all_here = not any(self._down)
+
+    def in_row(self, row: int) -> str:
+        """Return what the formula is in a row."""
+        if self._all_here:
+            return str(row).join(self._between)
+        cells = (
+            f"{text}{row + down}" for text, down in zip(self._between, self._down, strict=False)
+        )
+        return "".join(cells) + self._between[-1]
+
+
 # ---- OpenDocument (OASIS OpenDocument 1.3: part 3, 9.1.4, and part 4, 5.8) -----------------------
 
 _TABLE: Final = "{urn:oasis:names:tc:opendocument:xmlns:table:1.0}"
+_ERROR_CONSTANT: Final = re.compile(r"=#[A-Z0-9/]+[!?]?")
 _BRACKETED: Final = re.compile(r'("(?:[^"]|"")*")|\[([^\[\]]*)\]|;')
 _IN_BRACKETS: Final = re.compile(
     r"((?:\$?(?:'(?:[^']|'')*'|[^.':$]+))?)\.(\$?[A-Z]{1,3}\$?[0-9]{1,7})"
@@ -155,10 +233,11 @@ def _add_row(found: FormulaCells, element: etree._Element, row: int) -> None:
     column = 1
     for cell in element:
         repeated = _count(cell, "columns")
-        text = cell.get(f"{_TABLE}formula")
-        if text:
+        text = plain_formula(str(cell.get(f"{_TABLE}formula", "")))
+        # an error value that nothing computed can only be written as a formula that names it
+        if text != "=" and not _ERROR_CONSTANT.fullmatch(text):
             for each in range(column, column + min(repeated, 1000)):
-                found.add(row, each, plain_formula(str(text)))
+                found.add(row, each, text)
         column += repeated
 
 

@@ -7,7 +7,7 @@ from typing import Any, Final
 from cellfuncs import units
 from cellfuncs.errors import CellError
 from cellfuncs.physics import lines, refraction
-from workbooks.formulas import Medium
+from workbooks.formula_units import Medium
 from workbooks.headings import Heading, is_unit
 from workbooks.matching import folded
 
@@ -40,6 +40,21 @@ def number_in(text: str) -> str | None:
     digits = found[0].replace("−", "-").replace("–", "-").replace(" ", "")
     digits = re.sub(r"(?<=\d)[ ,'\u00a0\u2009](?=\d{3}(?!\d))", "", digits)
     return digits.replace(",", ".")
+
+
+_DATE: Final = re.compile(
+    r"(?:\d{4}-\d{1,2}-\d{1,2}"
+    r"|\d{1,2}([/.])\d{1,2}\1(?:\d{4}|\d\d)"
+    r"|\d{1,2}-(?:jan|feb|mar|apr|may|jun|jul|aug|sep|oct|nov|dec)(?:-(?:\d{4}|\d\d))?"
+    r"|(?:jan|feb|mar|apr|may|jun|jul|aug|sep|oct|nov|dec)-(?:\d{4}|\d\d))"
+    r"(?:[ T]\d{1,2}:\d\d(?::\d\d(?:[.]\d+)?)?Z?)?",
+    re.IGNORECASE,
+)
+
+
+def is_date(text: str) -> bool:
+    """Tell whether a text is how spreadsheets write a date: 2031-05-03, 05/03/31, 3-May, May-31."""
+    return bool(_DATE.fullmatch(text.strip()))
 
 
 MEDIUM_LABELS: Final = (

@@ -1,11 +1,12 @@
 """What stands above a sheet's columns, where the sheet is one of a recipe's and where it is not."""
 
 import re
-from collections import Counter
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any, Final
+
+import numpy as np
 
 from cellfuncs import units
 from cellfuncs.errors import InputError
@@ -86,9 +87,14 @@ class Log:
 
     def values(self, number: int) -> list[Any]:
         """Return the cells of a column under a heading, in the rows in use."""
-        cells = self._columns[number]
-        length = len(cells)
-        return [cells[row - 1] if row <= length else None for row in self.rows_in_use]
+        cells, rows = self._columns[number], self.rows_in_use
+        if isinstance(rows, range):
+            return cells[rows.start - 1 : rows.stop - 1]
+        return [cells[row - 1] for row in rows]
+
+    def below(self, number: int) -> Iterator[tuple[int, Any]]:
+        """Yield row and value of all cells of a column under a heading."""
+        return enumerate(self._columns[number][self.header_row :], self.header_row + 1)
 
     @property
     def row_numbers(self) -> range:
@@ -99,7 +105,7 @@ class Log:
         return {heading.number: heading for heading in self.headings}
 
     @cached_property
-    def rows_in_use(self) -> list[int]:
+    def rows_in_use(self) -> Sequence[int]:
         """The rows that hold a measurement; a remark under the table is none.
 
         With a recipe, what `fill` would compute; without, those with two filled cells or, in a
@@ -115,14 +121,15 @@ class Log:
         else:
             numbers = [heading.number for heading in self.headings if not heading.is_trail]
             least = min(2, len(numbers))
-        filled = Counter[int]()
+        begin = self.header_row
+        filled: Any = 0
         for number in numbers:
-            filled.update(
-                row
-                for row, value in enumerate(self._columns[number], 1)
-                if value is not None and row > self.header_row
-            )
-        return sorted(row for row, count in filled.items() if count >= least)
+            cells = self._columns[number][begin:]
+            filled = filled + np.array([value is not None for value in cells], dtype=np.int32)
+        rows = (np.flatnonzero(filled >= least) + begin + 1).tolist() if numbers else []
+        if rows and rows[-1] - rows[0] + 1 == len(rows):
+            return range(rows[0], rows[-1] + 1)
+        return rows
 
 
 def is_unit(text: str) -> bool:

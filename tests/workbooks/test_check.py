@@ -31,14 +31,17 @@ sys.path.insert(0, str(Path(__file__).parent))
 
 import audited
 from everything import write_everything
+from logs import by_libreoffice as saved_by_libreoffice
 
 from workbooks.annotate import annotate
 from workbooks.build import build
-from workbooks.check import KINDS, CheckReport, Finding, check
+from workbooks.check import CheckReport, check
 from workbooks.export import export
-from workbooks.formula_cells import formula_cells, plain_formula
-from workbooks.formulas import Follower, NotReadable, Part, Quantity, evaluated, parsed, relative
-from workbooks.header_words import medium_of_line, number_in
+from workbooks.findings import KINDS, Finding
+from workbooks.formula_cells import formula_cells, plain_formula, relative
+from workbooks.formula_units import Follower, Quantity
+from workbooks.formulas import NotReadable, Part, evaluated, parsed
+from workbooks.header_words import is_date, medium_of_line, number_in
 from workbooks.logbook import Area, LogbookError, cell_name
 from workbooks.recipe import built_in, load, read
 
@@ -57,37 +60,130 @@ def spots(report: CheckReport) -> set[audited.Place]:
 
 # ---- twenty with mistakes, twenty without ------------------------------------------------------
 
+LOGS = [
+    *[("seeded", number) for number in range(len(audited.SEEDED))],
+    *[("clean", number) for number in range(len(audited.CLEAN))],
+]
+# made, and converted by LibreOffice, once for all tests on one worker
+ON_THE_LOGS = pytest.mark.xdist_group("audited logs")
 
-@pytest.mark.parametrize("number", range(len(audited.SEEDED)))
-def test_every_mistake_is_found_at_its_cell_and_nothing_else(tmp_path: Path, number: int) -> None:
-    log = audited.seeded(number, tmp_path)
-    before = log.path.read_bytes()
-    report = check(log.path, log.recipe)
-    assert log.mistakes
-    assert log.mistakes - spots(report) == set(), "not found"
-    assert spots(report) - log.mistakes == set(), "found where nothing is wrong"
-    assert log.path.read_bytes() == before
-    assert sorted(tmp_path.iterdir()) == [log.path]
+
+@pytest.fixture(scope="module")
+def logs(tmp_path_factory: pytest.TempPathFactory) -> dict[tuple[str, int], audited.Audited]:
+    folder = tmp_path_factory.mktemp("logs")
+    return {each: getattr(audited, each[0])(each[1], folder) for each in LOGS}
+
+
+@pytest.fixture(scope="module")
+def converted(logs: dict[tuple[str, int], audited.Audited]) -> Path:
+    """The folder with every log as .ods and its first sheet as .csv, by LibreOffice"""
+    folder = next(iter(logs.values())).path.parent.with_name("converted")
+    as_held = "csv:Text - txt - csv (StarCalc):44,34,76,1,,0,false,false,false"
+    for form in ("ods", as_held):
+        subprocess.run(
+            ["soffice", f"-env:UserInstallation={(folder / 'profile').as_uri()}", "--headless",
+             "--norestore", "--convert-to", form, "--outdir", str(folder),
+             *[str(log.path) for log in logs.values()]],
+            check=True, capture_output=True, timeout=300,
+        )  # fmt: skip
+    return folder
+
+
+@ON_THE_LOGS
+@pytest.mark.parametrize("log", LOGS, ids=lambda log: f"{log[0]}{log[1]}")
+def test_every_mistake_is_found_at_its_cell_and_nothing_else(
+    logs: dict[tuple[str, int], audited.Audited], log: tuple[str, int]
+) -> None:
+    path, recipe, mistakes = logs[log].path, logs[log].recipe, logs[log].mistakes
+    before, files = path.read_bytes(), sorted(path.parent.iterdir())
+    report = check(path, recipe)
+    assert bool(mistakes) == (log[0] == "seeded")
+    assert mistakes - spots(report) == set(), "not found"
+    assert spots(report) - mistakes == set(), "found where nothing is wrong"
+    assert report.sheets
+    assert path.read_bytes() == before
+    assert sorted(path.parent.iterdir()) == files
     assert all(finding.sentence and finding.kind in KINDS for finding in report.findings)
 
 
-@pytest.mark.parametrize("number", range(len(audited.CLEAN)))
-def test_nothing_is_found_in_a_clean_log(tmp_path: Path, number: int) -> None:
-    log = audited.clean(number, tmp_path)
-    report = check(log.path, log.recipe)
-    assert [str(finding) for finding in report.findings] == []
+@ON_THE_LOGS
+@pytest.mark.parametrize("log", LOGS, ids=lambda log: f"{log[0]}{log[1]}")
+def test_the_same_is_found_in_what_libreoffice_saves_as_ods(
+    logs: dict[tuple[str, int], audited.Audited], converted: Path, log: tuple[str, int]
+) -> None:
+    # an .ods holds all of it, the stored results and errors of formulas too
+    report = check(converted / f"{logs[log].path.stem}.ods", logs[log].recipe)
+    assert logs[log].mistakes - spots(report) == set(), "not found"
+    assert spots(report) - logs[log].mistakes == set(), "found where nothing is wrong"
     assert report.sheets
 
 
-def test_the_seeded_logs_hold_every_kind_of_mistake(tmp_path: Path) -> None:
+FIRST_SHEETS = {
+    "filled": (audited.NIGHT, None),
+    "formulas": (audited.LOG, None),
+    "plain": ("Lines", "line-log"),
+    "none": ("Lines", "line-log"),
+    "distance": ("Distances", "distance-sheet"),
+}
+"""The sheet that LibreOffice saves as .csv, and the recipe that the text no longer names"""
+
+LOST_WITH_FORMULAS = {
+    "typed over",
+    "formula changed",
+    "wrong unit",
+    "units mixed",
+    "redshifts added",
+}
+"""A text holds what a formula gave, not the formula"""
+
+FORMULAS_IN = set("GHIJK")
+"""The columns of the log without a recipe in which «media mixed» is said of a formula"""
+
+SEEN_BY_ITS_INPUTS = {"plain-13"}
+"""Where a number typed over a formula is seen all the same: its inputs give another one. (That of
+distance-18 is not, because a header stands there twice and the recipe does not fit.)"""
+
+
+def in_a_text(log: audited.Audited) -> set[audited.Place]:
+    """Return the mistakes that are in the .csv of a log."""
+    sheet, _ = FIRST_SHEETS[log.path.stem.partition("-")[0]]
+    found = set()
+    for where, cell, kind in log.mistakes:
+        if where != sheet:
+            # settings and provenance have sheets of their own, and a text is one sheet
+            continue
+        if kind == "media mixed" and cell[0] in FORMULAS_IN:
+            continue
+        if kind not in LOST_WITH_FORMULAS:
+            found.add((log.path.stem, cell, kind))
+        elif kind == "typed over" and log.path.stem in SEEN_BY_ITS_INPUTS:
+            found.add((log.path.stem, cell, "differs"))
+    return found
+
+
+@ON_THE_LOGS
+@pytest.mark.parametrize("log", LOGS, ids=lambda log: f"{log[0]}{log[1]}")
+def test_what_a_text_can_hold_is_found_in_a_csv(
+    logs: dict[tuple[str, int], audited.Audited], converted: Path, log: tuple[str, int]
+) -> None:
+    stem = logs[log].path.stem
+    _, recipe = FIRST_SHEETS[stem.partition("-")[0]]
+    report = check(converted / f"{stem}.csv", load(recipe) if recipe else logs[log].recipe)
+    assert in_a_text(logs[log]) - spots(report) == set(), "not found"
+    assert spots(report) - in_a_text(logs[log]) == set(), "found where nothing is wrong"
+    assert report.sheets == [stem]
+
+
+@ON_THE_LOGS
+def test_the_seeded_logs_hold_every_kind_of_mistake(
+    logs: dict[tuple[str, int], audited.Audited],
+) -> None:
     assert len(audited.SEEDED) == len(audited.CLEAN) == 20
     assert sum(rows >= 1000 for _, rows in audited.CLEAN) >= 2
-    kinds = {
-        kind
-        for number in range(len(audited.SEEDED))
-        for _, _, kind in audited.seeded(number, tmp_path).mistakes
-    }
-    assert kinds == set(KINDS)
+    assert {kind for log in logs.values() for _, _, kind in log.mistakes} == set(KINDS)
+    # and a text can hold all but those of formulas and of a template's other sheets
+    held = {kind for log in logs.values() for _, _, kind in in_a_text(log)}
+    assert set(KINDS) - held == LOST_WITH_FORMULAS | {"bad setting"}
 
 
 @pytest.mark.parametrize("name", built_in())
@@ -368,6 +464,37 @@ def test_libreoffice_keeps_the_formulas_that_are_found(tmp_path: Path) -> None:
         assert len(pairs) == len(set(cells.values()))
 
 
+@ON_THE_LOGS
+def test_an_error_that_was_filled_in_is_no_formula_of_an_ods(converted: Path) -> None:
+    # this log was filled without formulas, some of its results as errors
+    path = converted / "distance-19.ods"
+    with zipfile.ZipFile(path) as archive:
+        assert b'table:formula="of:=#' in archive.read("content.xml")
+    assert formula_cells(path, "Distances").groups == []
+
+
+def test_formulas_are_read_alike_by_pattern_and_by_parser(tmp_path: Path) -> None:
+    path = write_everything(tmp_path / "everything.xlsx")
+    remarked = tmp_path / "remarked.xlsx"
+    with zipfile.ZipFile(path) as old, zipfile.ZipFile(remarked, "w") as new:
+        for info in old.infolist():
+            content = old.read(info)
+            if info.filename.startswith("xl/worksheets/sheet"):
+                content = content.replace(
+                    b"<sheetData>", b'<sheetData><!-- <c r="A1"><f>1</f></c> -->', 1
+                )
+            new.writestr(info, content)
+    read = openpyxl.load_workbook(path)
+    for name in ("Night 1", "Night 2, b&w"):
+        plain, by_parser = formula_cells(path, name), formula_cells(remarked, name)
+        assert plain.groups
+        assert plain.groups == by_parser.groups
+        assert plain.by_column == by_parser.by_column
+        for written in plain.groups:
+            stored = read[name].cell(written.row, written.column).value
+            assert getattr(stored, "text", stored) in (written.text, written.text.removeprefix("="))
+
+
 HEADERS = [
     "UT", "Target", "Line", "Centre [nm]", "Centre", "Centre [GHz]", "Air/vac", "z adopted", "z",
     "Redshift", "Offset at rest [km/s]", "Computed with", "Status", "Exposure [s]", "x [m**1e9]",
@@ -429,6 +556,24 @@ def test_no_sheet_is_too_strange(tmp_path: Path, number: int) -> None:
 )  # fmt: skip
 def test_number_in(text: str, number: str | None) -> None:
     assert number_in(text) == number
+
+
+@pytest.mark.parametrize(
+    "text",
+    ["2031-05-03", "2031-05-03T00:00:00", "05/03/2031 00:00:00", "5/3/31", "03.05.2031", "3-May",
+     "03-May-31", "12-MAR-2031", "May-31", " 2031-5-3 "],
+)  # fmt: skip
+def test_a_date_as_spreadsheets_write_it(text: str) -> None:
+    assert is_date(text)
+
+
+@pytest.mark.parametrize(
+    "text",
+    ["TH 4227-00", "3C 273", "M 31", "2031", "1.5", "12/05", "5-Mai", "MAR1", "2031-05",
+     "NGC 7-May", "12:30:00", "5/3.31", "th0005.fits", ""],
+)  # fmt: skip
+def test_what_is_no_date(text: str) -> None:
+    assert not is_date(text)
 
 
 @pytest.mark.parametrize(
@@ -583,6 +728,218 @@ def test_comments_of_openpyxl_are_added_to(tmp_path: Path) -> None:
     assert found == by_libreoffice(copy, tmp_path / "office")
 
 
+FAR = [
+    Finding("Night 1", "C2", "not a number", "stands under another cell"),
+    Finding("Night 1", "K6", "out of range", "beyond the used columns"),
+    Finding("Night 2, b&w", "A1", "no unit", "above the used rows"),
+    Finding("Night 2, b&w", "AB700", "out of range", "below the used rows"),
+    Finding("Night 3", "A1", "out of range", "on no sheet"),
+]
+
+
+@pytest.fixture(scope="module")
+def annotated_ods(tmp_path_factory: pytest.TempPathFactory) -> tuple[Path, Path]:
+    folder = tmp_path_factory.mktemp("annotated_ods")
+    source = saved_by_libreoffice(write_everything(folder / "everything.xlsx"), "ods", folder)
+    copy = folder / "copy.ods"
+    assert annotate(source, copy, [*FINDINGS, *FAR]) == 7
+    return source, copy
+
+
+def values_of(path: Path) -> dict[tuple[str, str], object]:
+    return {
+        (sheet.title, cell.coordinate): cell.value
+        for sheet in openpyxl.load_workbook(path, data_only=True).worksheets
+        for cell in sheet._cells.values()
+        if cell.value is not None
+    }
+
+
+def test_comments_stand_in_the_copy_of_an_ods(
+    annotated_ods: tuple[Path, Path], tmp_path: Path
+) -> None:
+    source, copy = annotated_ods
+    old = by_libreoffice(source, tmp_path / "before")
+    text = by_libreoffice(copy, tmp_path / "after")
+    mine = text["Night 1", "D5"]
+    assert mine.startswith(old["Night 1", "D5"].rstrip() + "\n\n")
+    assert "holds 1, but its inputs give 2 & <more>." in mine
+    both = text["Night 2, b&w", "D5"].split("\n\n")
+    assert both == [
+        "A value outside what is allowed (D5 to D7): is -1.",
+        "A number that the spreadsheet holds as text: '1 A'.",
+    ]
+    for finding in FAR[:-1]:
+        assert finding.sentence in text[finding.sheet, finding.cell]
+    assert set(text) == set(old) | {
+        (finding.sheet, finding.cell) for finding in [*FINDINGS, *FAR[:-1]]
+    }
+    before = values_of(saved_by_libreoffice(source, "xlsx", tmp_path / "old values"))
+    assert len(before) > 60
+    assert values_of(saved_by_libreoffice(copy, "xlsx", tmp_path / "new values")) == before
+
+
+def test_the_author_is_the_same_in_both_formats(
+    annotated: tuple[Path, Path], annotated_ods: tuple[Path, Path], tmp_path: Path
+) -> None:
+    converted = saved_by_libreoffice(annotated_ods[1], "xlsx", tmp_path / "by office")
+    found = {
+        openpyxl.load_workbook(path)["Night 1"]["F9"].comment.author  # type: ignore[union-attr]
+        for path in (annotated[1], converted)
+    }
+    assert found == {"cellfuncs check"}
+
+
+def runs_of(content: bytes) -> list[tuple[str, list[list[Any]]]]:
+    """Return each table's name and its rows: first row, how often, attributes, cells as runs.
+
+    Comments are left out, and equal neighbours are taken together.
+    """
+    root = etree.fromstring(content)
+    table, office = (f"{{{root.nsmap[prefix]}}}" for prefix in ("table", "office"))
+    found = []
+    for sheet in root.iter(f"{table}table"):
+        first = 0
+        rows: list[list[Any]] = []
+        for line in sheet.iter(f"{table}table-row"):
+            often = int(line.attrib.pop(f"{table}number-rows-repeated", 1))
+            cells: list[list[Any]] = []
+            for cell in line:
+                wide = int(cell.attrib.pop(f"{table}number-columns-repeated", 1))
+                for note in cell.findall(f"{office}annotation"):
+                    cell.remove(note)
+                text = etree.tostring(cell, method="c14n")
+                if cells and cells[-1][1] == text:
+                    cells[-1][0] += wide
+                else:
+                    cells.append([wide, text])
+            if rows and rows[-1][2:] == [dict(line.attrib), cells]:
+                rows[-1][1] += often
+            else:
+                rows.append([first, often, dict(line.attrib), cells])
+            first += often
+        found.append((str(sheet.get(f"{table}name")), rows))
+    return found
+
+
+def test_all_else_in_an_ods_stays_byte_for_byte(annotated_ods: tuple[Path, Path]) -> None:
+    source, copy = annotated_ods
+    with zipfile.ZipFile(source) as old, zipfile.ZipFile(copy) as new:
+        assert new.testzip() is None
+        assert new.namelist() == old.namelist()
+        assert {name for name in old.namelist() if old.read(name) != new.read(name)} == {
+            "content.xml"
+        }
+        before, after = old.read("content.xml"), new.read("content.xml")
+    comment = rb"<office:annotation><dc:creator>cellfuncs check</dc:creator>.*?</office:annotation>"
+    assert len(re.findall(comment, after)) == 6
+    # the parts outside the tables' rows, and the rows that nothing was found in
+    outside = re.compile(rb"<table:table-row.*</table:table-row>", re.DOTALL)
+    assert outside.sub(b"", before) == outside.sub(b"", after)
+    rows = re.compile(rb"<table:table-row.*?</table:table-row>", re.DOTALL)
+    untouched = [row for row in rows.findall(before) if row in after]
+    assert len(rows.findall(before)) - len(untouched) <= 7
+    # and all cells are the same, once comments are left out
+    assert len(runs_of(before)) > 2
+    assert runs_of(after) == runs_of(before)
+
+
+ODS_HEAD = (
+    '<d:document-content xmlns:d="urn:oasis:names:tc:opendocument:xmlns:office:1.0" '
+    'xmlns:t="urn:oasis:names:tc:opendocument:xmlns:table:1.0" '
+    'xmlns:x="urn:oasis:names:tc:opendocument:xmlns:text:1.0"><d:body><d:spreadsheet>'
+    "<t:table t:name='N'>"
+)
+ODS_TAIL = "</t:table></d:spreadsheet></d:body></d:document-content>"
+NOTE = (
+    '<d:annotation><dc:creator xmlns:dc="http://purl.org/dc/elements/1.1/">cellfuncs check'
+    "</dc:creator><x:p>An error value in a cell: why.</x:p></d:annotation>"
+)
+ADDED = "<x:p>An error value in a cell: why.</x:p>"
+
+
+@pytest.mark.parametrize(
+    ("cell", "rows", "expected"),
+    [
+        # a run of cells, and of rows, is split where the comment stands
+        ("B1", '<t:table-row><t:table-cell t:number-columns-repeated="3"/></t:table-row>',
+         f"<t:table-row><t:table-cell/><t:table-cell>{NOTE}</t:table-cell><t:table-cell/>"
+         "</t:table-row>"),
+        ("A3", "<t:table-row t:number-rows-repeated='9'><t:table-cell t:style-name='s'/>"
+         "</t:table-row>",
+         '<t:table-row t:number-rows-repeated="2"><t:table-cell t:style-name=\'s\'/></t:table-row>'
+         f"<t:table-row><t:table-cell t:style-name='s'>{NOTE}</t:table-cell></t:table-row>"
+         '<t:table-row t:number-rows-repeated="6"><t:table-cell t:style-name=\'s\'/>'
+         "</t:table-row>"),
+        # before text and what an auditor's arrows are made of, after a linked range's source
+        ("A1", "<t:table-row><t:table-cell><t:detective/><x:p>1</x:p></t:table-cell></t:table-row>",
+         f"<t:table-row><t:table-cell>{NOTE}<t:detective/><x:p>1</x:p></t:table-cell>"
+         "</t:table-row>"),
+        ("A1", '<t:table-row><t:table-cell><t:cell-range-source t:name="a/>b"/><x:p>1</x:p>'
+         "</t:table-cell></t:table-row>",
+         f'<t:table-row><t:table-cell><t:cell-range-source t:name="a/>b"/>{NOTE}<x:p>1</x:p>'
+         "</t:table-cell></t:table-row>"),
+        # upon a comment that is there, and one that is empty
+        ("A1", "<t:table-row><t:table-cell><d:annotation><x:p>by hand</x:p></d:annotation>"
+         "<x:p>1</x:p></t:table-cell></t:table-row>",
+         "<t:table-row><t:table-cell><d:annotation><x:p>by hand</x:p><x:p></x:p>"
+         f"{ADDED}</d:annotation><x:p>1</x:p></t:table-cell></t:table-row>"),
+        ("A1", "<t:table-row><t:table-cell><d:annotation /></t:table-cell></t:table-row>",
+         f"<t:table-row><t:table-cell><d:annotation >{ADDED}</d:annotation></t:table-cell>"
+         "</t:table-row>"),
+        # a covered cell, one beyond its row, and one beyond all rows
+        ("B1", '<t:table-row><t:table-cell t:number-columns-spanned="2"/><t:covered-table-cell/>'
+         "</t:table-row>",
+         '<t:table-row><t:table-cell t:number-columns-spanned="2"/>'
+         f"<t:covered-table-cell>{NOTE}</t:covered-table-cell></t:table-row>"),
+        ("D1", "<t:table-row><t:table-cell/></t:table-row>",
+         '<t:table-row><t:table-cell/><t:table-cell t:number-columns-repeated="2"/>'
+         f"<t:table-cell>{NOTE}</t:table-cell></t:table-row>"),
+        ("C1048576", "<t:table-row/><t:table-row t:number-rows-repeated='1048575'><t:table-cell"
+         " t:number-columns-repeated='16384'/></t:table-row>",
+         '<t:table-row/><t:table-row t:number-rows-repeated="1048574"><t:table-cell'
+         " t:number-columns-repeated='16384'/></t:table-row><t:table-row><t:table-cell"
+         f' t:number-columns-repeated="2"/><t:table-cell>{NOTE}</t:table-cell><t:table-cell'
+         ' t:number-columns-repeated="16381"/></t:table-row>'),
+        ("A3", "<t:table-row><t:table-cell/></t:table-row>",
+         "<t:table-row><t:table-cell/></t:table-row>"
+         f"<t:table-row><t:table-cell/></t:table-row><t:table-row><t:table-cell>{NOTE}"
+         "</t:table-cell></t:table-row>"),
+    ],
+)  # fmt: skip
+def test_where_a_comment_stands_in_an_ods(
+    tmp_path: Path, cell: str, rows: str, expected: str
+) -> None:
+    # OASIS ODF 1.3 part 3: 9.1.4 and 9.1.5 for cells and what they hold, 14.1 for comments
+    path, copy = tmp_path / "a.ods", tmp_path / "b.ods"
+    with zipfile.ZipFile(path, "w") as archive:
+        archive.writestr("mimetype", "application/vnd.oasis.opendocument.spreadsheet")
+        archive.writestr("content.xml", ODS_HEAD + rows + ODS_TAIL)
+    assert annotate(path, copy, [Finding("N", cell, "error value", "why")]) == 1
+    with zipfile.ZipFile(copy) as archive:
+        assert archive.read("content.xml").decode() == ODS_HEAD + expected + ODS_TAIL
+
+
+@ON_THE_LOGS
+def test_a_real_ods_is_annotated_from_end_to_end(
+    logs: dict[tuple[str, int], audited.Audited], converted: Path, tmp_path: Path
+) -> None:
+    log = logs["seeded", 4]
+    path = converted / f"{log.path.stem}.ods"
+    report = check(path, log.recipe)
+    copy, again = tmp_path / "copy.ods", tmp_path / "again.ods"
+    annotate(path, copy, report.findings)
+    wanted = {(finding.sheet, finding.cell) for finding in report.findings}
+    found = by_libreoffice(copy, tmp_path / "office")
+    assert set(found) == wanted
+    # and a second time, upon the first
+    annotate(copy, again, report.findings)
+    twice = by_libreoffice(again, tmp_path / "office again")
+    assert twice == {place: f"{text}\n\n{text}" for place, text in found.items()}
+    # comments are no mistakes
+    assert spots(check(again, log.recipe)) == spots(report)
+
+
 def test_a_copy_is_refused_where_it_would_do_harm(tmp_path: Path) -> None:
     path = write_everything(tmp_path / "a.xlsx")
     before = path.read_bytes()
@@ -593,7 +950,7 @@ def test_a_copy_is_refused_where_it_would_do_harm(tmp_path: Path) -> None:
         annotate(path, tmp_path / "b.xlsx", FINDINGS)
     with pytest.raises(LogbookError, match=r"must end in \.xlsx"):
         annotate(path, tmp_path / "b.ods", FINDINGS)
-    with pytest.raises(LogbookError, match=r"\.xlsx and \.xlsm only"):
+    with pytest.raises(LogbookError, match=r"\.xlsx, \.xlsm and \.ods only"):
         annotate(tmp_path / "a.csv", tmp_path / "b.csv", FINDINGS)
     assert path.read_bytes() == before
     assert (tmp_path / "b.xlsx").read_bytes() == b"mine"
