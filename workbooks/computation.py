@@ -98,14 +98,21 @@ class Computation:
         settings: Mapping[str, Any],
         cosmology: Cosmology,
         also: Iterable[int] = (),
+        cells: Mapping[int, list[Any]] | None = None,
     ) -> None:
-        """Read the columns that the recipe knows, and `also` others; work out the computed ones."""
+        """Work out the computed columns.
+
+        also: columns to be read besides those that the recipe knows
+        cells: all columns, where they have been read
+        """
         self.match = match
         self.table = match.table
         self.settings = settings
         self.cosmology = cosmology
-        numbers = {*(place.number for place in match.places.values()), *also}
-        self.cells: Mapping[int, list[Any]] = match.sheet.columns(numbers)
+        if cells is None:
+            numbers = {*(place.number for place in match.places.values()), *also}
+            cells = match.sheet.columns(numbers)
+        self.cells = cells
         """By number, from row 1: `cells[4][16]` is cell D17"""
         self.rows = self._rows_in_use()
         self.inputs = {column.key: self._input(column) for column in self.table.inputs}

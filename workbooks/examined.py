@@ -63,7 +63,7 @@ class Examined:
         """What the sheet's inputs give now; None without a recipe that fits"""
         if self.log.match is None or self.cosmology is None:
             return None
-        return Computation(self.log.match, self.settings, self.cosmology)
+        return Computation(self.log.match, self.settings, self.cosmology, cells=self.log.columns)
 
     def value(self, row: int, number: int) -> Any:
         return self.log.value(row, number)

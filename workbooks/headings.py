@@ -75,26 +75,26 @@ class Log:
         return f"{self.sheet.name}!{cell_name(row, number)}"
 
     @cached_property
-    def _columns(self) -> dict[int, list[Any]]:
+    def columns(self) -> dict[int, list[Any]]:
         """The columns under headings, each from row 1"""
         return self.sheet.columns({heading.number for heading in self.headings})
 
     def value(self, row: int, number: int) -> Any:
-        cells = self._columns.get(number)
+        cells = self.columns.get(number)
         if cells is None:
             return value_at(self.sheet, row, number)
         return cells[row - 1] if row <= len(cells) else None
 
     def values(self, number: int) -> list[Any]:
         """Return the cells of a column under a heading, in the rows in use."""
-        cells, rows = self._columns[number], self.rows_in_use
+        cells, rows = self.columns[number], self.rows_in_use
         if isinstance(rows, range):
             return cells[rows.start - 1 : rows.stop - 1]
         return [cells[row - 1] for row in rows]
 
     def below(self, number: int) -> Iterator[tuple[int, Any]]:
         """Yield row and value of all cells of a column under a heading."""
-        return enumerate(self._columns[number][self.header_row :], self.header_row + 1)
+        return enumerate(self.columns[number][self.header_row :], self.header_row + 1)
 
     @property
     def row_numbers(self) -> range:
@@ -124,7 +124,7 @@ class Log:
         begin = self.header_row
         filled: Any = 0
         for number in numbers:
-            cells = self._columns[number][begin:]
+            cells = self.columns[number][begin:]
             filled = filled + np.array([value is not None for value in cells], dtype=np.int32)
         rows = (np.flatnonzero(filled >= least) + begin + 1).tolist() if numbers else []
         if rows and rows[-1] - rows[0] + 1 == len(rows):
