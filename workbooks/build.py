@@ -21,10 +21,9 @@ from cellfuncs.bridges.sample import group_key, over_rows
 from cellfuncs.bridges.steps import Steps
 from cellfuncs.families.workbook import provenance
 from cellfuncs.symbols import Expr, NotTraceable, kept, name, node
-from workbooks import supporting
-from workbooks.charts import chart_sheet
-from workbooks.connect import SPELLING
+from workbooks.commands.connect import SPELLING
 from workbooks.expression import Cells
+from workbooks.files.saving import write_whole
 from workbooks.recipe import (
     ROW_OK,
     STATUS,
@@ -37,10 +36,11 @@ from workbooks.recipe import (
     unexplained,
     working_title,
 )
-from workbooks.saving import write_whole
-from workbooks.season import Season, season_sheet, working_sheet
 from workbooks.settings import COSMOLOGY_CELLS
-from workbooks.sheets import (
+from workbooks.template import supporting
+from workbooks.template.charts import chart_sheet
+from workbooks.template.season import Season, season_sheet, working_sheet
+from workbooks.template.sheets import (
     ALERT,
     BOLD,
     BOX,

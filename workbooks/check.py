@@ -6,7 +6,7 @@ from pathlib import Path
 from typing import Any, Final
 
 from cellfuncs.physics.expansion import Cosmology
-from workbooks import (
+from workbooks.audit import (
     difference_findings,
     error_findings,
     formula_findings,
@@ -14,9 +14,9 @@ from workbooks import (
     trails,
     value_findings,
 )
-from workbooks.examined import Examined
+from workbooks.audit.examined import Examined
+from workbooks.audit.findings import Finding, Spot, in_runs
 from workbooks.fill import recipe_of, settings_of
-from workbooks.findings import Finding, Spot, in_runs
 from workbooks.headings import logs_of
 from workbooks.logbook import Logbook, LogbookError
 from workbooks.recipe import Recipe

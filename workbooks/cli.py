@@ -10,15 +10,15 @@ from typing import Annotated
 import typer
 
 from cellfuncs.errors import CellError
-from workbooks.check_command import check
-from workbooks.connect import connect_calc
-from workbooks.connect_excel import connect_excel
-from workbooks.export_command import export
-from workbooks.fill_command import fill
-from workbooks.functions import functions
+from workbooks.commands.check import check
+from workbooks.commands.connect import connect_calc
+from workbooks.commands.connect_excel import connect_excel
+from workbooks.commands.export import export
+from workbooks.commands.fill import fill
+from workbooks.commands.functions import functions
+from workbooks.commands.statuses import DONE, WRONG_CALL
 from workbooks.logbook import LogbookError
 from workbooks.recipe import RecipeError
-from workbooks.statuses import DONE, WRONG_CALL
 
 app = typer.Typer(
     name="cellfuncs",
@@ -72,9 +72,9 @@ def template(
 ) -> None:
     """Make a template workbook that computes in any spreadsheet program, nothing installed."""
     from workbooks import build
+    from workbooks.files.saving import check_target
     from workbooks.recipe import built_in, load
-    from workbooks.saving import check_target
-    from workbooks.season import Season
+    from workbooks.template.season import Season
 
     if recipe is None:
         for name in built_in():

@@ -7,15 +7,16 @@ from pathlib import Path
 from typing import Any, Final
 
 from cellfuncs.families.workbook import provenance
-from workbooks import csv_on_the_web, table_formats
+from workbooks.files.saving import check_target, write_whole
 from workbooks.fill import COMPUTED_WITH, recipe_of, settings_of
 from workbooks.headings import Log, logs_of, value_at
 from workbooks.logbook import Logbook, LogbookError
 from workbooks.matching import Remark, folded
 from workbooks.recipe import Recipe
-from workbooks.saving import check_target, write_whole
 from workbooks.settings import PROVENANCE_CELLS
-from workbooks.typed_columns import UTC_SCALE, TypedColumn, text_of, typed
+from workbooks.tables import csv_on_the_web
+from workbooks.tables import formats as table_formats
+from workbooks.tables.typed_columns import UTC_SCALE, TypedColumn, text_of, typed
 
 
 @dataclass

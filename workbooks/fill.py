@@ -11,8 +11,9 @@ from cellfuncs.errors import CellError, InputError, MissingInput
 from cellfuncs.families.workbook import provenance
 from cellfuncs.physics.expansion import DEFAULT, Cosmology, cosmology_from
 from workbooks.computation import Computation, is_refusal
-from workbooks.edits import UNSET
 from workbooks.expression import given_arguments
+from workbooks.files.edits import UNSET
+from workbooks.files.saving import backups, check_target
 from workbooks.logbook import ErrorValue, Logbook, LogbookError, cell_name
 from workbooks.matching import Match, Place, Remark, folded, header_of, labels_of, matched
 from workbooks.recipe import (
@@ -25,7 +26,6 @@ from workbooks.recipe import (
     plain_key,
     unexplained,
 )
-from workbooks.saving import backups, check_target
 from workbooks.settings import COSMOLOGY_CELLS, OWN, SET_CELL
 from workbooks.summary import write_groups, write_results
 

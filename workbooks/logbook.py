@@ -8,8 +8,8 @@ from pathlib import Path
 from typing import Final
 
 from cellfuncs.errors import near_matches
-from workbooks.cells import Area, ErrorValue, LogbookError, Value, cell_name
-from workbooks.sheet import HEADER_ROWS, Sheet
+from workbooks.files.cells import Area, ErrorValue, LogbookError, Value, cell_name
+from workbooks.files.sheet import HEADER_ROWS, Sheet
 
 __all__ = [
     "FORMATS",
@@ -118,31 +118,31 @@ class Logbook(ABC):
 
 
 def _xlsx(path: Path) -> Logbook:
-    from workbooks.xlsx import XlsxLogbook
+    from workbooks.files.xlsx import XlsxLogbook
 
     return XlsxLogbook(path)
 
 
 def _csv(path: Path) -> Logbook:
-    from workbooks.delimited import DelimitedLogbook
+    from workbooks.files.delimited import DelimitedLogbook
 
     return DelimitedLogbook(path)
 
 
 def _tsv(path: Path) -> Logbook:
-    from workbooks.delimited import DelimitedLogbook
+    from workbooks.files.delimited import DelimitedLogbook
 
     return DelimitedLogbook(path, "\t")
 
 
 def _ecsv(path: Path) -> Logbook:
-    from workbooks.ecsv import EcsvLogbook
+    from workbooks.files.ecsv import EcsvLogbook
 
     return EcsvLogbook(path)
 
 
 def _ods(path: Path) -> Logbook:
-    from workbooks.opendocument import OdsLogbook
+    from workbooks.files.opendocument import OdsLogbook
 
     return OdsLogbook(path)
 

@@ -22,8 +22,8 @@ import typer
 import cellfuncs
 from cellfuncs.bridges.calc.extension import Extension, build, environment
 from cellfuncs.errors import InputError
-from workbooks import connect
-from workbooks.connect import connect_calc
+from workbooks.commands import connect
+from workbooks.commands.connect import connect_calc
 
 sys.path.insert(0, str(Path(__file__).parent))
 
@@ -110,7 +110,7 @@ def test_a_user_installs_for_themselves(home: Path) -> None:
         "PYTHONPATH": os.pathsep.join([*environment(), str(Path(connect.__file__).parents[1])]),
         "PYTHONDONTWRITEBYTECODE": "1",
     }
-    call = "from workbooks.connect import connect_calc; connect_calc({}, None)"
+    call = "from workbooks.commands.connect import connect_calc; connect_calc({}, None)"
     outputs = []
     for remove in (False, False, True, True):
         done = subprocess.run(

@@ -35,7 +35,8 @@ from openpyxl.utils.datetime import to_excel
 import cellfuncs
 from cellfuncs import CATALOGUE, CellError, Function, InputError
 from cellfuncs.catalogue import Number
-from workbooks import cli, connect_excel
+from workbooks import cli
+from workbooks.commands import connect_excel
 
 # Excel's numbers of its error values and their VARIANT codes: Microsoft's documentation of CVErr
 # and of XlCVError; in COM the code is 0x800A0000 with the number in the lower half.

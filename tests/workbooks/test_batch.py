@@ -19,7 +19,7 @@ sys.path.insert(0, str(Path(__file__).parent))
 
 from logs import RECIPE, REPOSITORY, ROWS, run, write_xlsx
 
-from workbooks import batch
+from workbooks.commands import batch
 from workbooks.logbook import LogbookError
 
 CLEAN = [ROWS[0], ROWS[1]]

@@ -33,15 +33,15 @@ import audited
 from everything import write_everything
 from logs import by_libreoffice as saved_by_libreoffice
 
-from workbooks.annotate import annotate
+from workbooks.audit.annotate import annotate
+from workbooks.audit.findings import KINDS, Finding
+from workbooks.audit.formula_cells import formula_cells, plain_formula, relative
+from workbooks.audit.formula_units import Follower, Quantity
+from workbooks.audit.formulas import NotReadable, Part, evaluated, parsed
+from workbooks.audit.header_words import is_date, medium_of_line, number_in
 from workbooks.build import build
 from workbooks.check import CheckReport, check
 from workbooks.export import export
-from workbooks.findings import KINDS, Finding
-from workbooks.formula_cells import formula_cells, plain_formula, relative
-from workbooks.formula_units import Follower, Quantity
-from workbooks.formulas import NotReadable, Part, evaluated, parsed
-from workbooks.header_words import is_date, medium_of_line, number_in
 from workbooks.logbook import Area, LogbookError, cell_name
 from workbooks.recipe import built_in, load, read
 

@@ -33,10 +33,10 @@ from logs import (
 )
 
 import cellfuncs as cf
-from workbooks import delimited, records
+from workbooks.files import delimited, records
+from workbooks.files.records import LONGEST, OpenedFile, Text, unquoted
 from workbooks.fill import Report, fill
 from workbooks.logbook import ErrorValue, Logbook, LogbookError
-from workbooks.records import LONGEST, OpenedFile, Text, unquoted
 
 NEW = ["Redshift", "Velocity [km/s]", "Computed with"]
 

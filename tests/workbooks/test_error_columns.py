@@ -20,7 +20,7 @@ import cellfuncs as cf
 from workbooks.build import build
 from workbooks.fill import Report, fill
 from workbooks.recipe import Recipe, read
-from workbooks.sheets import FIRST_ROW, letters_of
+from workbooks.template.sheets import FIRST_ROW, letters_of
 
 Floats = NDArray[np.float64]
 every_engine = pytest.mark.parametrize("engine", ENGINES)

@@ -41,16 +41,16 @@ from astropy.table import Table
 from astropy.time import Time
 from openpyxl.worksheet.worksheet import Worksheet
 
-from workbooks import table_formats
-from workbooks.ascii_spelling import ascii_of
 from workbooks.build import build
-from workbooks.csv_on_the_web import write_both
 from workbooks.export import ExportReport, export
+from workbooks.files.saving import write_whole
 from workbooks.fill import fill
 from workbooks.logbook import LogbookError
 from workbooks.recipe import Recipe, built_in, load, read
-from workbooks.saving import write_whole
-from workbooks.typed_columns import julian_date
+from workbooks.tables import formats as table_formats
+from workbooks.tables.ascii_spelling import ascii_of
+from workbooks.tables.csv_on_the_web import write_both
+from workbooks.tables.typed_columns import julian_date
 
 NOW = datetime(2031, 3, 15, 9, 30, tzinfo=UTC)
 
@@ -754,7 +754,7 @@ def test_breaking_off_just_after_the_table_leaves_no_old_metadata_beside_it(
 KILLED = """
 import os, signal, sys
 from pathlib import Path
-from workbooks.csv_on_the_web import write_both
+from workbooks.tables.csv_on_the_web import write_both
 count, real = int(sys.argv[2]), {name: getattr(os, name) for name in ("fsync", "replace")}
 def killed(name, *arguments):
     global count
@@ -993,7 +993,7 @@ def test_rows_of_ecsv_and_votable_are_those_that_astropy_writes(
         number = numbers[index % len(numbers)]
         rows.append([texts[index % len(texts)], number, number if index % 2 else None, index < 9])
     path = logbook(tmp_path, rows)
-    monkeypatch.setattr("workbooks.typed_columns.BLOCK", 5)
+    monkeypatch.setattr("workbooks.tables.typed_columns.BLOCK", 5)
     for suffix, form in ((".ecsv", "ascii.ecsv"), (".vot", "votable")):
         table, _, output = exported(path, suffix, recipe=None)
         again = tmp_path / f"again{suffix}"

@@ -27,10 +27,10 @@ sys.path.insert(0, str(Path(__file__).parent))
 from logs import HEADERS, ROWS, by_libreoffice, recipe, redshift, run, write_xlsx
 
 from workbooks.build import build
+from workbooks.files.ods_content import Walk
+from workbooks.files.opendocument import KIND
 from workbooks.fill import fill
 from workbooks.logbook import ErrorValue, Logbook, LogbookError, Value
-from workbooks.ods_content import Walk
-from workbooks.opendocument import KIND
 from workbooks.recipe import load
 
 T = "{urn:oasis:names:tc:opendocument:xmlns:table:1.0}"

@@ -32,11 +32,11 @@ sys.path.insert(0, str(Path(__file__).parent))
 
 from everything import MAIN, NIGHT_PART, write_everything
 
-from workbooks.cells import ErrorValue, LogbookError, Value, cell_name, column_number
-from workbooks.edits import Edits
+from workbooks.files.cells import ErrorValue, LogbookError, Value, cell_name, column_number
+from workbooks.files.edits import Edits
+from workbooks.files.package import Package
+from workbooks.files.worksheet import SheetPart
 from workbooks.logbook import Logbook
-from workbooks.package import Package
-from workbooks.worksheet import SheetPart
 
 NIGHT = "Night 1"
 

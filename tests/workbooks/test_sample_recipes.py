@@ -24,7 +24,7 @@ import cellfuncs as cf
 from workbooks.build import build
 from workbooks.fill import Report, fill
 from workbooks.recipe import Table, load
-from workbooks.sheets import FIRST_ROW, letters_of
+from workbooks.template.sheets import FIRST_ROW, letters_of
 
 RECIPES = ("spectrum-summary", "cluster-members", "hubble-diagram")
 C = 299_792.458  # km/s, exact in the SI

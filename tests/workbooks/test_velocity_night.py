@@ -30,7 +30,7 @@ from workbooks.build import build
 from workbooks.cli import app
 from workbooks.fill import fill
 from workbooks.recipe import RecipeError, load
-from workbooks.season import Season
+from workbooks.template.season import Season
 
 SHEET, FIRST_ROW = "Exposures", 5
 FIRST, LAST = date(2026, 3, 1), date(2028, 2, 29)

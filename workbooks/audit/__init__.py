@@ -1,0 +1,1 @@
+"""What `check` looks for, and how its findings are told."""

@@ -1,0 +1,1 @@
+"""The commands, and what a person hears of them."""

@@ -1,0 +1,1 @@
+"""A table on its way into the formats of archives."""
