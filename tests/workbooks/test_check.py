@@ -6,6 +6,7 @@ LibreOffice read the comments; precedence by OASIS OpenDocument 1.3 part 4, sect
 ECMA-376 part 1, 18.7, their boxes by its part 4.
 """
 
+import fcntl
 import json
 import os
 import re
@@ -64,8 +65,6 @@ LOGS = [
     *[("seeded", number) for number in range(len(audited.SEEDED))],
     *[("clean", number) for number in range(len(audited.CLEAN))],
 ]
-# made, and converted by LibreOffice, once for all tests on one worker
-ON_THE_LOGS = pytest.mark.xdist_group("audited logs")
 
 
 @pytest.fixture(scope="module")
@@ -75,21 +74,30 @@ def logs(tmp_path_factory: pytest.TempPathFactory) -> dict[tuple[str, int], audi
 
 
 @pytest.fixture(scope="module")
-def converted(logs: dict[tuple[str, int], audited.Audited]) -> Path:
+def converted(
+    logs: dict[tuple[str, int], audited.Audited], tmp_path_factory: pytest.TempPathFactory
+) -> Path:
     """The folder with every log as .ods and its first sheet as .csv, by LibreOffice"""
-    folder = next(iter(logs.values())).path.parent.with_name("converted")
+    folder = tmp_path_factory.getbasetemp()
+    if run := os.environ.get("PYTEST_XDIST_TESTRUNUID"):
+        # the workers of one run share what takes LibreOffice most of a minute
+        folder = folder.parent / f"converted-{run}"
+    folder.mkdir(exist_ok=True)
     as_held = "csv:Text - txt - csv (StarCalc):44,34,76,1,,0,false,false,false"
-    for form in ("ods", as_held):
-        subprocess.run(
-            ["soffice", f"-env:UserInstallation={(folder / 'profile').as_uri()}", "--headless",
-             "--norestore", "--convert-to", form, "--outdir", str(folder),
-             *[str(log.path) for log in logs.values()]],
-            check=True, capture_output=True, timeout=300,
-        )  # fmt: skip
+    with (folder / "lock").open("w") as lock:
+        fcntl.flock(lock, fcntl.LOCK_EX)
+        if not (folder / "done").exists():
+            for form in ("ods", as_held):
+                subprocess.run(
+                    ["soffice", f"-env:UserInstallation={(folder / 'profile').as_uri()}",
+                     "--headless", "--norestore", "--convert-to", form, "--outdir", str(folder),
+                     *[str(log.path) for log in logs.values()]],
+                    check=True, capture_output=True, timeout=300,
+                )  # fmt: skip
+            (folder / "done").touch()
     return folder
 
 
-@ON_THE_LOGS
 @pytest.mark.parametrize("log", LOGS, ids=lambda log: f"{log[0]}{log[1]}")
 def test_every_mistake_is_found_at_its_cell_and_nothing_else(
     logs: dict[tuple[str, int], audited.Audited], log: tuple[str, int]
@@ -106,7 +114,6 @@ def test_every_mistake_is_found_at_its_cell_and_nothing_else(
     assert all(finding.sentence and finding.kind in KINDS for finding in report.findings)
 
 
-@ON_THE_LOGS
 @pytest.mark.parametrize("log", LOGS, ids=lambda log: f"{log[0]}{log[1]}")
 def test_the_same_is_found_in_what_libreoffice_saves_as_ods(
     logs: dict[tuple[str, int], audited.Audited], converted: Path, log: tuple[str, int]
@@ -161,7 +168,6 @@ def in_a_text(log: audited.Audited) -> set[audited.Place]:
     return found
 
 
-@ON_THE_LOGS
 @pytest.mark.parametrize("log", LOGS, ids=lambda log: f"{log[0]}{log[1]}")
 def test_what_a_text_can_hold_is_found_in_a_csv(
     logs: dict[tuple[str, int], audited.Audited], converted: Path, log: tuple[str, int]
@@ -174,7 +180,6 @@ def test_what_a_text_can_hold_is_found_in_a_csv(
     assert report.sheets == [stem]
 
 
-@ON_THE_LOGS
 def test_the_seeded_logs_hold_every_kind_of_mistake(
     logs: dict[tuple[str, int], audited.Audited],
 ) -> None:
@@ -464,7 +469,6 @@ def test_libreoffice_keeps_the_formulas_that_are_found(tmp_path: Path) -> None:
         assert len(pairs) == len(set(cells.values()))
 
 
-@ON_THE_LOGS
 def test_an_error_that_was_filled_in_is_no_formula_of_an_ods(converted: Path) -> None:
     # this log was filled without formulas, some of its results as errors
     path = converted / "distance-19.ods"
@@ -920,7 +924,6 @@ def test_where_a_comment_stands_in_an_ods(
         assert archive.read("content.xml").decode() == ODS_HEAD + expected + ODS_TAIL
 
 
-@ON_THE_LOGS
 def test_a_real_ods_is_annotated_from_end_to_end(
     logs: dict[tuple[str, int], audited.Audited], converted: Path, tmp_path: Path
 ) -> None:
