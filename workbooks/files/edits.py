@@ -39,9 +39,12 @@ class _Column:
     def __len__(self) -> int:
         return len(self._cells) + len(self._numbers)
 
-    def __getitem__(self, row: int) -> Value | Unset:
-        before = len(self._cells)
-        return self._cells[row] if row < before else self._numbers[row - before]
+    def at(self, row: int) -> Value | Unset:
+        """Return the value noted for a row, UNSET where there is none."""
+        place = row - len(self._cells)
+        if place < 0:
+            return self._cells[row]
+        return self._numbers[place] if place < len(self._numbers) else UNSET
 
     def __iter__(self) -> Iterator[Value | Unset]:
         return chain(self._cells, self._numbers)
@@ -147,7 +150,7 @@ class Edits:
     def __contains__(self, place: tuple[int, int]) -> bool:
         row, column = place
         cells = self._columns.get(column)
-        return cells is not None and row < len(cells) and cells[row] is not UNSET
+        return cells is not None and cells.at(row) is not UNSET
 
     @property
     def columns(self) -> list[int]:
@@ -162,9 +165,9 @@ class Edits:
     def row(self, number: int) -> list[tuple[int, Value]]:
         """Return the columns and values noted for a row, from left to right."""
         return [
-            (column, cells[number])  # type: ignore[misc]
+            (column, value)
             for column, cells in self._columns.items()
-            if number < len(cells) and cells[number] is not UNSET
+            if (value := cells.at(number)) is not UNSET
         ]
 
     def rows(self, start: int, stop: int) -> Iterator[tuple[Value | Unset, ...]]:
@@ -202,7 +205,7 @@ class Edits:
             if first is None:
                 continue
             last = len(cells) - 1
-            while cells[last] is UNSET or cells[last] is None:
+            while cells.at(last) in (UNSET, None):
                 last -= 1
             rows += [first, last]
             columns.append(column)

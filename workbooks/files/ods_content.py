@@ -17,7 +17,7 @@ from workbooks.files.ods_cells import (
     TableRow,
 )
 from workbooks.files.ods_rows import PlainRow, PlainRows
-from workbooks.files.xml_check import Checker
+from workbooks.files.xml_check import Checker, is_obviously_sound
 
 Row = TableRow | PlainRow
 
@@ -120,13 +120,18 @@ class Walk(Checker):
                 names = " ".join(f'xmlns:{prefix}="{uri}"' for uri, prefix in self.prefixes.items())
                 self._row_checker.feed(f"<rows {names}>".encode())
         base = self._fed + self._taken - start
+        learnt = self._rows.learnt
         end = start
         hits = []
         while hit := self._rows.match(content, end):
             hits.append(hit)
             end = hit[1].end()
         if self._row_checker:
-            self._row_checker.feed(content[start:end])
+            rows = content[start:end]
+            # What fits a shape is as well-formed as the row that the shape was learnt from, but
+            # for characters and entities.
+            if self._rows.learnt > learnt or not is_obviously_sound(rows):
+                self._row_checker.feed(rows)
         for shape, found in hits:
             row = PlainRow(self._next_row, shape, found, base, self._rows)
             self._next_row += row.repeated

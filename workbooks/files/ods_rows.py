@@ -206,6 +206,8 @@ class PlainRows:
         self._row = re.compile(row.encode())
         self.row_end = f"</{prefixes[TABLE]}:table-row>".encode()
         self.paragraph_tag = len(f"<{prefixes[TEXT]}:p>")
+        self.learnt = 0
+        """How many rows had to be looked at for their shape"""
         self._shapes: dict[bytes, Shape | None] = {}
         self._recent: list[Shape] = []
 
@@ -227,6 +229,7 @@ class PlainRows:
 
     def _learnt(self, row: bytes, tag_end: int) -> Shape | None:
         """Return the shape of a row, None where it is one for the careful way."""
+        self.learnt += 1
         made = _Learning(row, self._namespaces)
         repeated = made.row(tag_end)
         for found in self._cell.finditer(row, tag_end):

@@ -77,13 +77,13 @@ class Writer:
             self.done = row.end
             return
         end = self._after(row.start, row.end)
-        numbers = [
-            number
+        wanted = {
+            number: values
             for number in range(row.number, min(row.number + row.repeated, edits.last_row + 1))
-            if edits.row(number)
-        ]
-        if numbers:
-            self.patches.append((row.start, end, b"".join(self._split(row, end, numbers, edits))))
+            if (values := edits.row(number))
+        }
+        if wanted:
+            self.patches.append((row.start, end, b"".join(self._split(row, wanted))))
         self.done = end
         self.last = table, row.number + row.repeated - 1, end
 
@@ -113,18 +113,18 @@ class Writer:
                 self.patches.append((end, end, b"".join(rows)))
         self.done = self.walk.at
 
-    def _split(self, row: Row, end: int, numbers: list[int], edits: Edits) -> Iterator[bytes]:
+    def _split(self, row: Row, wanted: Mapping[int, list[tuple[int, Value]]]) -> Iterator[bytes]:
         """Yield a row, or what is left of one that was repeated, with some of its cells set."""
         tag = self._tag(row.start)
         inner = self._bytes(row.start + len(tag), row.end) if not tag.endswith(b"/>") else b""
         plain = self._without(tag, self._rows_repeated)
         plain = plain[:-2] + b">" if plain.endswith(b"/>") else plain
         number = row.number
-        for edited in numbers:
+        for edited, values in wanted.items():
             if edited > number:
                 yield self._repeating(plain, "rows", edited - number) + inner + self._row_end
             yield plain
-            yield from self._cells(row, tag, edits.row(edited))
+            yield from self._cells(row, tag, values)
             yield self._row_end
             number = edited + 1
         left = row.number + row.repeated - number
