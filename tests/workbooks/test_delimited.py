@@ -33,8 +33,9 @@ from logs import (
 )
 
 import cellfuncs as cf
-from workbooks.files import delimited, records
-from workbooks.files.records import LONGEST, OpenedFile, Text, unquoted
+from workbooks.files import delimited, opened
+from workbooks.files.opened import OpenedFile
+from workbooks.files.records import LONGEST, Text, unquoted
 from workbooks.fill import Report, fill
 from workbooks.logbook import ErrorValue, Logbook, LogbookError
 
@@ -207,7 +208,7 @@ def test_blocks_may_end_anywhere(
     outputs = []
     for block in (size, 1 << 20):
         with pytest.MonkeyPatch.context() as patch:
-            patch.setattr(records, "BLOCK", block)
+            patch.setattr(opened, "BLOCK", block)
             text = Text(OpenedFile(path), ",")
             found = list(text.records())
             assert [list(map(unquoted, record.fields)) for record in found] == read

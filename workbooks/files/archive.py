@@ -1,7 +1,6 @@
 """A zip archive opened with suspicion; parts are exchanged, every other one kept as it is."""
 
 import io
-import os
 import zipfile
 import zlib
 from collections.abc import Callable, Iterable, Iterator, Mapping
@@ -12,11 +11,11 @@ from typing import IO, BinaryIO, Final
 from lxml import etree
 
 from workbooks.files.cells import LogbookError
-from workbooks.files.saving import Stamp, check_target, stamp, write_whole
+from workbooks.files.opened import OpenedFile
+from workbooks.files.saving import check_target, stamp, write_whole
 from workbooks.files.xml_check import check_xml
 
 # A year's logbook unpacks to some tens of megabytes, its densest part perhaps 30 to 1.
-MOST_PACKED = 512 << 20
 MOST_UNPACKED = 1 << 30
 MOST_ENTRIES = 10_000
 MOST_RATIO = 200
@@ -41,7 +40,9 @@ class Archive:
     def __init__(self, path: Path, kind: str) -> None:
         """Open and check `path`; raise LogbookError, naming `kind`, where it is not sound."""
         self.path = path
-        self._packed, self._stamp = read_file(path)
+        file = OpenedFile(path)
+        self._packed, self._stamp = file.content(), file.stamp
+        file.close()
         if self._packed.startswith(CFB_MAGIC):
             raise LogbookError(
                 f"{path} is encrypted or in the old .xls format; "
@@ -231,29 +232,3 @@ def pack_beside(file: IO[bytes], chunks: Iterable[bytes]) -> None:
             before = after
         if before:
             before.result()
-
-
-def read_file(path: Path) -> tuple[bytes, Stamp]:
-    """Return a logbook's bytes and what tells its state; raise LogbookError where it has none."""
-    try:
-        if path.exists() and not path.is_file():
-            raise LogbookError(f"{path} is a folder or a device, not a workbook")
-        with path.open("rb") as file:
-            status = os.fstat(file.fileno())
-            if status.st_size > MOST_PACKED:
-                raise LogbookError(
-                    f"{path} has {status.st_size:,} bytes, more than the "
-                    f"{MOST_PACKED:,} that a workbook may have"
-                )
-            content = file.read(status.st_size)
-            if len(content) != status.st_size or stamp(os.fstat(file.fileno())) != stamp(status):
-                raise LogbookError(
-                    f"{path} was being written by another program while it was read; try again"
-                )
-    except FileNotFoundError:
-        raise LogbookError(f"{path} does not exist") from None
-    except OSError as error:
-        raise LogbookError(f"{path} cannot be read: {error.strerror}") from error
-    if not content:
-        raise LogbookError(f"{path} is empty (0 bytes)")
-    return content, stamp(status)

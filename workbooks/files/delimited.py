@@ -9,7 +9,8 @@ from pathlib import Path
 from typing import Any, BinaryIO, Final
 
 from workbooks.files.cells import LAST_COLUMN, LAST_ROW, ErrorValue, LogbookError, Value
-from workbooks.files.records import Block, OpenedFile, Record, Text, unquoted
+from workbooks.files.opened import OpenedFile
+from workbooks.files.records import Block, Record, Text, unquoted
 from workbooks.files.saving import stamp, write_whole
 from workbooks.files.sheet import HEADER_ROWS, Gathered, Sheet
 from workbooks.logbook import Logbook
