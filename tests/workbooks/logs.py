@@ -115,12 +115,14 @@ def by_libreoffice(source: Path, format_and_filter: str, folder: Path) -> Path:
     return folder / f"{source.stem}.{format_and_filter.partition(':')[0]}"
 
 
-def run(folder: Path, *arguments: str, **options: Any) -> subprocess.CompletedProcess[str]:
-    """Run the command as a shell would, in a pipe."""
+def run(
+    folder: Path, *arguments: str, path: str = str(REPOSITORY), **options: Any
+) -> subprocess.CompletedProcess[str]:
+    """Run the command as a shell would, in a pipe; `path` is where Python looks for modules."""
     return subprocess.run(
         [sys.executable, "-m", "workbooks.cli", *arguments],
         cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(REPOSITORY), "COLUMNS": "200"},
+        env={**os.environ, "PYTHONPATH": path, "COLUMNS": "200"},
         capture_output=True,
         text=True,
         timeout=120,

@@ -33,6 +33,7 @@ sys.path.insert(0, str(Path(__file__).parent))
 import audited
 from everything import write_everything
 from logs import by_libreoffice as saved_by_libreoffice
+from logs import run
 
 from workbooks.audit.annotate import annotate
 from workbooks.audit.findings import KINDS, Finding
@@ -43,7 +44,7 @@ from workbooks.audit.header_words import is_date, medium_of_line, number_in
 from workbooks.build import build
 from workbooks.check import CheckReport, check
 from workbooks.export import export
-from workbooks.logbook import Area, LogbookError, cell_name
+from workbooks.logbook import Area, Logbook, LogbookError, cell_name
 from workbooks.recipe import built_in, load, read
 
 
@@ -459,8 +460,8 @@ def test_libreoffice_keeps_the_formulas_that_are_found(tmp_path: Path) -> None:
          "--norestore", "--convert-to", "ods", "--outdir", str(tmp_path), str(log.path)],
         check=True, capture_output=True, timeout=120,
     )  # fmt: skip
-    mine = formula_cells(log.path, audited.LOG)
-    theirs = formula_cells(log.path.with_suffix(".ods"), audited.LOG)
+    mine = formula_cells(Logbook.open(log.path), audited.LOG)
+    theirs = formula_cells(Logbook.open(log.path.with_suffix(".ods")), audited.LOG)
     assert len(mine.groups) == len(theirs.groups) > 15
     assert mine.by_column.keys() == theirs.by_column.keys()
     for column, cells in mine.by_column.items():
@@ -474,7 +475,7 @@ def test_an_error_that_was_filled_in_is_no_formula_of_an_ods(converted: Path) ->
     path = converted / "distance-19.ods"
     with zipfile.ZipFile(path) as archive:
         assert b'table:formula="of:=#' in archive.read("content.xml")
-    assert formula_cells(path, "Distances").groups == []
+    assert formula_cells(Logbook.open(path), "Distances").groups == []
 
 
 def test_formulas_are_read_alike_by_pattern_and_by_parser(tmp_path: Path) -> None:
@@ -490,7 +491,7 @@ def test_formulas_are_read_alike_by_pattern_and_by_parser(tmp_path: Path) -> Non
             new.writestr(info, content)
     read = openpyxl.load_workbook(path)
     for name in ("Night 1", "Night 2, b&w"):
-        plain, by_parser = formula_cells(path, name), formula_cells(remarked, name)
+        plain, by_parser = (formula_cells(Logbook.open(each), name) for each in (path, remarked))
         assert plain.groups
         assert plain.groups == by_parser.groups
         assert plain.by_column == by_parser.by_column
@@ -960,18 +961,6 @@ def test_a_copy_is_refused_where_it_would_do_harm(tmp_path: Path) -> None:
 
 
 # ---- the command -------------------------------------------------------------------------------
-
-
-def run(folder: Path, *arguments: str) -> subprocess.CompletedProcess[str]:
-    return subprocess.run(
-        [sys.executable, "-m", "workbooks.cli", *arguments],
-        cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[2])},
-        capture_output=True,
-        text=True,
-        timeout=60,
-        check=False,
-    )
 
 
 def test_the_command_ends_with_0_1_or_2(tmp_path: Path) -> None:

@@ -48,9 +48,7 @@ class Examined:
         self.name = self.sheet.name
         self.rows = self.log.rows_in_use
         self.formulas = (
-            formula_cells(self.logbook.path, self.name)
-            if self.sheet.formula_columns
-            else FormulaCells()
+            formula_cells(self.logbook, self.name) if self.sheet.formula_columns else FormulaCells()
         )
         self.trails = RowTrails(self.log, self.cosmology)
         self.is_text = isinstance(self.sheet, DelimitedSheet)

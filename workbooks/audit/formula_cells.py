@@ -4,15 +4,17 @@ import re
 from collections.abc import Iterator
 from dataclasses import dataclass, field
 from io import BytesIO
-from pathlib import Path
 from typing import Final
 
 from lxml import etree
 
-from workbooks.files.archive import Archive
 from workbooks.files.cells import Area, column_number
-from workbooks.files.package import Package
+from workbooks.files.ods_cells import FORMULA_TEXT
+from workbooks.files.ods_content import Row
+from workbooks.files.opendocument import OdsLogbook
+from workbooks.files.xlsx import XlsxLogbook
 from workbooks.files.xml_check import ATTRIBUTES, attributes_of
+from workbooks.logbook import Logbook
 
 _PLACE: Final = re.compile(r"([A-Z]{1,3})([0-9]{1,7})")
 
@@ -57,14 +59,13 @@ class FormulaCells:
         self.by_column.setdefault(column, {})[row] = group
 
 
-def formula_cells(path: Path, sheet: str) -> FormulaCells:
+def formula_cells(logbook: Logbook, sheet: str) -> FormulaCells:
     """Return the formulas of a sheet; none in a file that holds only values."""
-    suffix = path.suffix.lower()
-    if suffix in (".xlsx", ".xlsm"):
-        package = Package(path)
+    if isinstance(logbook, XlsxLogbook):
+        package = logbook.package
         return _of_worksheet(package.part(package.sheets[sheet]))
-    if suffix == ".ods":
-        return _of_table(Archive(path, suffix).part("content.xml"), sheet)
+    if isinstance(logbook, OdsLogbook):
+        return _of_table(logbook, sheet)
     return FormulaCells()
 
 
@@ -193,57 +194,27 @@ class _Moving:
 
 # ---- OpenDocument (OASIS OpenDocument 1.3: part 3, 9.1.4, and part 4, 5.8) -----------------------
 
-_TABLE: Final = "{urn:oasis:names:tc:opendocument:xmlns:table:1.0}"
-_ERROR_CONSTANT: Final = re.compile(r"=#[A-Z0-9/]+[!?]?")
 _BRACKETED: Final = re.compile(r'("(?:[^"]|"")*")|\[([^\[\]]*)\]|;')
 _IN_BRACKETS: Final = re.compile(
     r"((?:\$?(?:'(?:[^']|'')*'|[^.':$]+))?)\.(\$?[A-Z]{1,3}\$?[0-9]{1,7})"
 )
 
 
-def _of_table(content: bytes, sheet: str) -> FormulaCells:
+def _of_table(logbook: OdsLogbook, sheet: str) -> FormulaCells:
     found = FormulaCells()
-    tags = tuple(f"{_TABLE}{name}" for name in ("table", "table-row"))
-    inside = False
-    row = 0
-    events = etree.iterparse(
-        BytesIO(content),
-        events=("start", "end"),
-        tag=tags,
-        resolve_entities=False,
-        no_network=True,
-        load_dtd=False,
-    )
-    for event, element in events:
-        if element.tag == tags[0]:
-            inside = event == "start" and element.get(f"{_TABLE}name") == sheet
-            row = 0
-        elif event == "end":
-            repeated = _count(element, "rows")
-            if inside:
-                # what is repeated a million times holds nothing
-                for each in range(row + 1, row + 1 + min(repeated, 1000)):
-                    _add_row(found, element, each)
-            row += repeated
-            element.clear()
+
+    def take(row: Row) -> bool:
+        with_formula = [cell for cell in row.cells if cell.has_formula]
+        # what is repeated a million times holds nothing
+        for number in range(row.number, row.number + min(row.repeated, 1000)):
+            for cell in with_formula:
+                text = plain_formula(cell.attributes[FORMULA_TEXT])
+                for column in range(cell.column, cell.column + min(cell.repeated, 1000)):
+                    found.add(number, column, text)
+        return True
+
+    logbook.read(sheet, take)
     return found
-
-
-def _add_row(found: FormulaCells, element: etree._Element, row: int) -> None:
-    column = 1
-    for cell in element:
-        repeated = _count(cell, "columns")
-        text = plain_formula(str(cell.get(f"{_TABLE}formula", "")))
-        # an error value that nothing computed can only be written as a formula that names it
-        if text != "=" and not _ERROR_CONSTANT.fullmatch(text):
-            for each in range(column, column + min(repeated, 1000)):
-                found.add(row, each, text)
-        column += repeated
-
-
-def _count(element: etree._Element, of: str) -> int:
-    given = str(element.get(f"{_TABLE}number-{of}-repeated", "1"))
-    return int(given) if given.isdigit() and len(given) <= 7 else 1
 
 
 def plain_formula(text: str) -> str:

@@ -27,35 +27,36 @@ class XlsxLogbook(Logbook):
     def __init__(self, path: Path) -> None:
         """Open and check `path`; raise LogbookError for anything that is not a sound .xlsx."""
         super().__init__(path)
-        self._package = Package(path)
+        self.package = Package(path)
+        """The parts of the file, as they were when it was opened"""
 
     @property
     def sheet_names(self) -> list[str]:
-        return list(self._package.sheets)
+        return list(self.package.sheets)
 
     def _open_sheet(self, name: str) -> Sheet:
-        return XlsxSheet(self._package, name)
+        return XlsxSheet(self.package, name)
 
     @cached_property
     def named_cells(self) -> dict[str, tuple[str, int, int]]:
         found: dict[str, tuple[str, int, int]] = {}
-        for name, reference in self._package.global_names.items():
+        for name, reference in self.package.global_names.items():
             sheet, mark, place = reference.removeprefix("=").rpartition("!")
             if sheet.startswith("'") and sheet.endswith("'"):
                 sheet = sheet[1:-1].replace("''", "'")
             area = Area.parsed(place)
-            if not mark or area is None or sheet not in self._package.sheets or ":" in place:
+            if not mark or area is None or sheet not in self.package.sheets or ":" in place:
                 continue
             found[name] = (sheet, area.first_row, area.first_column)
         return found
 
     def save(self, path: Path, *, overwrite: bool = False, backup: bool = False) -> None:
         replaced = {
-            self._package.sheets[sheet.name]: sheet.edited_pieces
+            self.package.sheets[sheet.name]: sheet.edited_pieces
             for sheet in self._opened.values()
             if isinstance(sheet, XlsxSheet) and sheet.is_edited
         }
-        self._package.save(Path(path), replaced, overwrite=overwrite, backup=backup)
+        self.package.save(Path(path), replaced, overwrite=overwrite, backup=backup)
 
 
 class XlsxSheet(Sheet):
