@@ -13,6 +13,10 @@ from pathlib import Path
 import openpyxl
 import pytest
 
+sys.path.insert(0, str(Path(__file__).parent))
+
+from logs import run
+
 import cellfuncs as cf
 from workbooks.recipe import built_in
 
@@ -41,18 +45,6 @@ label = "Redshift"
 role = "computed"
 formula = "redshift_from_line(wavelength, line)"
 """
-
-
-def run(folder: Path, *arguments: str) -> subprocess.CompletedProcess[str]:
-    return subprocess.run(
-        [sys.executable, "-m", "workbooks.cli", *arguments],
-        cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[2]), "COLUMNS": "200"},
-        capture_output=True,
-        text=True,
-        timeout=60,
-        check=False,
-    )
 
 
 def one_sentence(ran: subprocess.CompletedProcess[str]) -> str:

@@ -41,6 +41,10 @@ from astropy.table import Table
 from astropy.time import Time
 from openpyxl.worksheet.worksheet import Worksheet
 
+sys.path.insert(0, str(Path(__file__).parent))
+
+from logs import run
+
 from workbooks.build import build
 from workbooks.export import ExportReport, export
 from workbooks.files.saving import write_whole
@@ -1086,18 +1090,6 @@ def test_of_several_sheets_one_must_be_named(tmp_path: Path) -> None:
     assert (report.sheet, report.rows) == ("Second", 1)
 
 
-def run(folder: Path, *arguments: str, **environment: str) -> subprocess.CompletedProcess[str]:
-    return subprocess.run(
-        [sys.executable, "-m", "workbooks.cli", *arguments],
-        cwd=folder,
-        env={**os.environ, "PYTHONPATH": str(Path(__file__).parents[2]), **environment},
-        capture_output=True,
-        text=True,
-        timeout=60,
-        check=False,
-    )
-
-
 def test_the_command(night: Path, tmp_path: Path) -> None:
     (tmp_path / "own.toml").write_text(OWN)
     ran = run(tmp_path, "export", str(night), "-o", "out.vot", "-r", "own.toml")
@@ -1144,7 +1136,7 @@ def test_without_the_library_parquet_is_declined_in_a_sentence(night: Path, tmp_
     (tmp_path / "hidden").mkdir()
     (tmp_path / "hidden" / "pyarrow.py").write_text("raise ImportError('not here')")
     path = f"{tmp_path / 'hidden'}{os.pathsep}{Path(__file__).parents[2]}"
-    ran = run(tmp_path, "export", str(night), "-o", "out.parquet", PYTHONPATH=path)
+    ran = run(tmp_path, "export", str(night), "-o", "out.parquet", path=path)
     assert ran.returncode == 2
     assert "pip install cellfuncs[parquet]" in ran.stderr
     assert ran.stderr.count("\n") == 1

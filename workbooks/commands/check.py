@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from workbooks.commands.options import AsJson, Logbooks, RecipeName
 from workbooks.commands.progress import progress
 from workbooks.commands.statuses import DATA_PROBLEMS
 from workbooks.commands.told import tell_all, tell_one
@@ -24,18 +25,8 @@ class Task:
 
 
 def check(
-    logbook: Annotated[
-        list[Path],
-        typer.Argument(
-            help="Logbooks; a folder stands for those in it, a quoted pattern for those that match."
-        ),
-    ],
-    recipe: Annotated[
-        str | None,
-        typer.Option(
-            "--recipe", "-r", help="A recipe's name or .toml file; a template needs none."
-        ),
-    ] = None,
+    logbook: Logbooks,
+    recipe: RecipeName = None,
     annotate: Annotated[
         Path | None,
         typer.Option(
@@ -43,7 +34,7 @@ def check(
         ),
     ] = None,
     overwrite: Annotated[bool, typer.Option(help="Let the copy replace a file.")] = False,
-    as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
+    as_json: AsJson = False,
 ) -> None:
     """Look logbooks through for mistakes of hands and programs; nothing is changed."""
     from workbooks import check as checking

@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from workbooks.commands.options import AsJson, Logbooks, RecipeName
 from workbooks.commands.progress import progress
 from workbooks.commands.statuses import DATA_PROBLEMS, rows_told
 from workbooks.commands.told import tell_all, tell_one
@@ -28,12 +29,7 @@ class Task:
 
 
 def export(
-    logbook: Annotated[
-        list[Path],
-        typer.Argument(
-            help="Logbooks; a folder stands for those in it, a quoted pattern for those that match."
-        ),
-    ],
+    logbook: Logbooks,
     output: Annotated[
         Path,
         typer.Option(
@@ -44,18 +40,13 @@ def export(
             "folder and the suffix: archive/.fits",
         ),
     ],
-    recipe: Annotated[
-        str | None,
-        typer.Option(
-            "--recipe", "-r", help="A recipe's name or .toml file; a template needs none."
-        ),
-    ] = None,
+    recipe: RecipeName = None,
     sheet: Annotated[
         str | None, typer.Option(help="The sheet to take, where several hold a table.")
     ] = None,
     dates: Annotated[str, typer.Option(help="iso: ISO 8601 text; jd: Julian dates.")] = "iso",
     overwrite: Annotated[bool, typer.Option(help="Let the output replace files.")] = False,
-    as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
+    as_json: AsJson = False,
 ) -> None:
     """Write a sheet's table with its units to FITS, VOTable, ECSV, CSV or Parquet."""
     from workbooks.commands import batch

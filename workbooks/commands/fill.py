@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
+from workbooks.commands.options import AsJson, RecipeName
 from workbooks.commands.progress import progress
 from workbooks.commands.statuses import DATA_PROBLEMS, rows_told
 from workbooks.commands.told import tell_all, tell_one
@@ -31,12 +32,7 @@ def fill(
             help="Where to write, a folder for several; left out: NAME-filled beside each.",
         ),
     ] = None,
-    recipe: Annotated[
-        str | None,
-        typer.Option(
-            "--recipe", "-r", help="A recipe's name or .toml file; a template needs none."
-        ),
-    ] = None,
+    recipe: RecipeName = None,
     in_place: Annotated[
         bool, typer.Option("--in-place", help="Write into the file itself.")
     ] = False,
@@ -45,7 +41,7 @@ def fill(
         typer.Option(help="With --in-place, keep what was there as NAME.before-fill."),
     ] = True,
     overwrite: Annotated[bool, typer.Option(help="Let the output replace a file.")] = False,
-    as_json: Annotated[bool, typer.Option("--json", help="Print the report as JSON.")] = False,
+    as_json: AsJson = False,
 ) -> None:
     """Compute a logbook's columns and write them in; everything else stays byte for byte."""
     from workbooks import fill as filling
